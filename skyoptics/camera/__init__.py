@@ -1,0 +1,1 @@
+"""Lens projections, aim and frame."""

@@ -1,0 +1,1 @@
+"""From spectra to display colour and image files."""

@@ -1,0 +1,1 @@
+"""Ice crystals: shapes, orientations, tracing."""

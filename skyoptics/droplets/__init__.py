@@ -1,0 +1,1 @@
+"""Water drops: geometric optics, waves, sizes."""

@@ -1,0 +1,1 @@
+"""Axes, angles and grids of directions."""

@@ -1,0 +1,1 @@
+"""Refractive index and absorption of water, ice, air and tabulated liquids."""

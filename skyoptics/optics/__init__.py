@@ -1,0 +1,1 @@
+"""Interfaces, polarisation, bow and halo angles, spectral bins and scattering tables."""

@@ -1,0 +1,1 @@
+"""What was asked for: scene files, their model and their faults."""

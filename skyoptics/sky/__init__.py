@@ -1,0 +1,1 @@
+"""Radiance of layers and curtains of particles over a background."""
