@@ -3,7 +3,8 @@
 A batch has a 64-bit key made by `batch_key` from (seed, bin, batch) with the splitmix64 finaliser (Steele, Lea & Flood,
 OOPSLA 2014); each ray and dimension inside it is hashed with the low and the high half of that key by a 32-bit mixer
 (two rounds of xor-shift-multiply, "lowbias32" constants). All arithmetic is 32 bit inside a batch, so the loop over rays
-vectorises.
+vectorises. The offset of a dimension is hashed from the high half, not added to it: with a plain sum all batches would
+draw from one pool of 2**32 rays.
 
 Dimension numbers (one table for all tracers):
 
@@ -55,9 +56,8 @@ def mix32(x):
 @njit(cache=True, nogil=True, error_model="numpy", inline="always")
 def hash32(key_low, key_high, ray, dimension):
     """Return 32 random bits for one ray (uint32) and one dimension (uint32) of a batch."""
-    x = mix32(np.uint32(key_low ^ np.uint32(ray)))
-    x = mix32(np.uint32(x + np.uint32(dimension) * np.uint32(0x9E3779B9) + key_high))
-    return x
+    offset = mix32(np.uint32(key_high + np.uint32(dimension) * np.uint32(0x9E3779B9)))  # constant in a batch: hoisted
+    return mix32(np.uint32(mix32(np.uint32(key_low ^ np.uint32(ray))) + offset))
 
 
 @njit(cache=True, nogil=True, error_model="numpy", inline="always")
