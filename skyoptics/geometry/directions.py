@@ -168,7 +168,7 @@ class Directions:
             own = np.stack([flat * np.cos(longitude), flat * np.sin(longitude), np.sin(latitude)], axis=-1)
             own[np.abs(latitude) > np.pi / 2.0 + 1e-12] = np.nan
             return own @ self.rotation
-        scale, column_centre, row_centre, q_max = self.map
+        scale, column_centre, row_centre, _ = self.map
         x, y = np.broadcast_arrays((column - column_centre) / scale, (row_centre - row) / scale)
         q = self._invert(np.hypot(x, y))
         k = self._k(q)
@@ -252,19 +252,13 @@ class Directions:
     def _invert(self, radius: FloatArray) -> FloatArray:
         """Return q for image radii; nan beyond q_max.
 
-        A table of 4097 angles brackets the answer; three steps of Newton's rule in θ, then finish it (q = sin²(θ/2)).
+        Linear between 65537 angles: wrong by less than 1e-9 rad, save within 1e-4 rad of a rim where the image stands
+        still (orthographic), and there by less than 1e-5 rad.
         """
-        angle_max = 2.0 * np.arcsin(np.sqrt(self.map[3]))
-        theta = np.linspace(0.0, angle_max, 4097)
+        theta = np.linspace(0.0, 2.0 * np.arcsin(np.sqrt(self.map[3])), 65537)
         table = self._radius(np.sin(theta / 2.0) ** 2)
-        guess = np.interp(radius, table, theta)
-        for _ in range(3):
-            low, high = np.maximum(guess - 1e-6, 0.0), np.minimum(guess + 1e-6, angle_max)
-            r_low, r_high = (self._radius(np.sin(t / 2.0) ** 2) for t in (low, high))
-            slope = np.maximum((r_high - r_low) / (high - low), 1e-9)
-            error = self._radius(np.sin(guess / 2.0) ** 2) - radius
-            guess = np.clip(guess - error / slope, 0.0, angle_max)
-        return np.where(radius <= table[-1] * (1.0 + 1e-12), np.sin(guess / 2.0) ** 2, np.nan)
+        angle = np.interp(radius, table, theta)
+        return np.where(radius <= table[-1] * (1.0 + 1e-12), np.sin(angle / 2.0) ** 2, np.nan)
 
 
 def frame_about(pole: FloatArray) -> FloatArray:
