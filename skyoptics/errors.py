@@ -7,7 +7,8 @@
     ├── DomainError               physics outside the range where the model holds
     ├── DataFileError             a table, spectrum or image file that cannot be used
     ├── ResumeError               stored work that does not fit the job
-    └── ResourceError             memory, disk or a folder that is not there or not ours
+    ├── ResourceError             memory, disk or a folder that is not there or not ours
+    └── NothingFoundError         a name that is not there; exit code 3
 
 Every text says what was given, what is allowed and what to do next.
 """
@@ -78,6 +79,10 @@ class ResumeError(SkyopticsError):
 
 class ResourceError(SkyopticsError):
     """Memory, disk space or a folder that the job needs and does not have."""
+
+
+class NothingFoundError(SkyopticsError):
+    """What was asked for by name is not there."""
 
 
 def nearest(name: str, known: Iterable[str]) -> str:

@@ -1,0 +1,5 @@
+"""``python -m skyoptics``."""
+
+from skyoptics.cli.main import main
+
+main()

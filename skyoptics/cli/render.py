@@ -1,0 +1,94 @@
+"""``skyoptics render``: scene file to picture and report."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+from typing import Any
+
+import click
+
+from skyoptics.cli.options import SceneFile, Word, json_option, sampling_options
+
+
+@click.command("render", short_help="Scene file to picture and report.")
+@click.argument("scene", type=SceneFile())
+@click.option("--out", type=click.Path(path_type=Path), help="Folder for the files; default outputs/NAME.")
+@click.option(
+    "--set", "overrides", multiple=True, metavar="TABLE.KEY=VALUE", help="Change a value, e.g. air.1.radius_um=250."
+)
+@click.option("--data", is_flag=True, help="Write the spectral radiance too, as NetCDF.")
+@click.option("--image", "extra", multiple=True, type=Word(["exr", "tiff"]), help="Write a linear float image too.")
+@click.option("--dry-run", is_flag=True, help="Say what it would take: rays, memory, time, files.")
+@json_option
+@sampling_options
+def command(
+    scene: Path,
+    out: Path | None,
+    overrides: tuple[str, ...],
+    data: bool,
+    extra: tuple[str, ...],
+    dry_run: bool,
+    as_json: bool,
+    quality: str,
+    seed: int,
+    threads: int | None,
+) -> None:
+    """Render SCENE: a TOML file, or the name of an example scene (see: skyoptics scenes).
+
+    Example: skyoptics render double-bow --set light.elevation_deg=10 --quality draft
+    """
+    from skyoptics.scene.files import safe_name
+    from skyoptics.scene.load import load
+
+    described = load(scene, overrides)
+    name = safe_name(scene)
+    folder = out or Path("outputs", name)
+    from skyoptics.cli import progress
+    from skyoptics.render import output
+    from skyoptics.render.run import Settings, render, usable_cores
+
+    settings = Settings(quality, seed, threads or usable_cores())
+    if dry_run:
+        _estimate(described, scene, settings, output.planned(folder, name, data, extra), data, as_json)
+        return
+    output.prepare(folder)
+    progress.note_first_compilation()
+    with progress.shown() as tell:
+        result = render(described, str(scene), settings, tell, data)
+    words = _command(scene, overrides, data, extra, quality, seed)
+    files = output.write(result, described, folder, name, words, data, extra)
+    for caution in result.report["cautions"]:
+        click.echo(f"caution: {caution}", err=True)
+    last = f"{files[0]}: {result.report['look_for']}"
+    if as_json:
+        click.echo(json.dumps(result.report, ensure_ascii=False))
+        click.echo(last, err=True)
+    else:
+        click.echo(last)
+
+
+def _command(
+    scene: Path, overrides: tuple[str, ...], data: bool, extra: tuple[str, ...], quality: str, seed: int
+) -> list[str]:
+    """Return the words that make the picture again, run beside the scene file."""
+    words = ["skyoptics", "render", scene.name, "--seed", str(seed), "--quality", quality]
+    for override in overrides:
+        words += ["--set", override]
+    return words + (["--data"] if data else []) + [word for name in extra for word in ("--image", name)]
+
+
+def _estimate(scene: Any, path: Path, settings: Any, files: list[Path], data: bool, as_json: bool) -> None:
+    """Print what a render would take."""
+    from skyoptics.render.estimate import estimate
+
+    wanted = estimate(scene, str(path), settings, data) | {"files": [str(file) for file in files]}
+    if as_json:
+        click.echo(json.dumps(wanted))
+        return
+    click.echo(
+        f"rays to trace   {wanted['rays']:,} at least ({wanted['stored_tables']} of {wanted['tables']} tables are stored)"
+    )
+    click.echo(f"memory          {wanted['memory_bytes'] / 1e9:.2f} GB")
+    click.echo(f"time            about {wanted['seconds']:.0f} s, kernels compiled")
+    click.echo("files           " + "\n                ".join(wanted["files"]))

@@ -1,0 +1,176 @@
+"""From description to physics: the one place where a scene's words become SI numbers and arrays.
+
+Nothing is traced here. Whatever the physics refuses is reported as a fault of the scene, with its key.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass
+from functools import partial
+
+import numpy as np
+
+from skyoptics.camera import frame
+from skyoptics.errors import DataFileError, DomainError, Fault, SceneError
+from skyoptics.geometry.axes import azimuth_elevation
+from skyoptics.geometry.directions import Directions
+from skyoptics.light.air import Air
+from skyoptics.light.sun import sun
+from skyoptics.materials import index as material
+from skyoptics.optics.bins import Bins
+from skyoptics.optics.source import Source
+from skyoptics.scene.model import Drops, Light, Scene
+from skyoptics.sky.amount import curtain, layer
+from skyoptics.sky.compose import Background
+from skyoptics.units import NM, FloatArray
+
+DEFAULT_EDGES_NM = (380.0, 400.0, 415.0, *np.arange(430.0, 681.0, 10.0).tolist(), 695.0, 715.0, 740.0, 780.0)
+"""Edges of the default bins [nm]: 10 nm where the eye sees well, wider at the ends."""
+VISIBLE_NM = (380.0, 780.0)
+
+
+@dataclass(frozen=True, eq=False)
+class DropSheet:
+    """Drops of one size and where they hang.
+
+    Parameters
+    ----------
+    name : str
+        For reports.
+    index : RefractiveIndex
+        Of the drops, relative to what they float in.
+    radius : float
+        [m]
+    orders : tuple of int
+        Orders p to show.
+    amount : callable
+        Elevation [rad] → amount [1].
+    """
+
+    name: str
+    index: material.RefractiveIndex
+    radius: float
+    orders: tuple[int, ...]
+    amount: Callable[[FloatArray], FloatArray]
+
+
+@dataclass(frozen=True, eq=False)
+class Job:
+    """A scene as physics.
+
+    Parameters
+    ----------
+    bins : Bins
+        Wavelength axis.
+    sources : tuple of Source
+        What shines.
+    sheets : tuple of DropSheet
+        What scatters.
+    directions : Directions
+        The picture's pixels.
+    background : Background
+        What lies behind.
+    """
+
+    bins: Bins
+    sources: tuple[Source, ...]
+    sheets: tuple[DropSheet, ...]
+    directions: Directions
+    background: Background
+
+
+def build(scene: Scene, where: str) -> Job:
+    """Return the physics of a scene.
+
+    Parameters
+    ----------
+    scene : Scene
+        Checked description.
+    where : str
+        Name of its file, for faults.
+
+    Returns
+    -------
+    Job
+
+    Raises
+    ------
+    SceneError
+        If the physics refuses a value, such as a wavelength outside the data of an index.
+    """
+    bins = spectral_bins(scene)
+    with _blame(where, "light"):
+        source = _sun(scene.light, bins)
+    sheets = []
+    for number, particles in enumerate(scene.air, start=1):
+        with _blame(where, f"air.{number}"):
+            sheets.append(_drops(particles, scene.medium.kind, bins, f"{number}"))
+    with _blame(where, "camera"):
+        directions = _directions(scene, source)
+    return Job(bins, (source,), tuple(sheets), directions, Background(scene.picture.background, scene.picture.ground))
+
+
+def spectral_bins(scene: Scene) -> Bins:
+    """Return the wavelength axis that a scene asks for."""
+    picture = scene.picture
+    if picture.wavelengths is not None:
+        return Bins.lines(picture.wavelengths)
+    if picture.bin_nm is not None:
+        edges = np.arange(VISIBLE_NM[0], VISIBLE_NM[1] + 1e-6, picture.bin_nm)
+        if edges[-1] < VISIBLE_NM[1] - 1e-6:
+            edges = np.append(edges, VISIBLE_NM[1])
+        return Bins.adjoining(edges * NM)
+    return Bins.adjoining(np.array(DEFAULT_EDGES_NM) * NM)
+
+
+def _sun(light: Light, bins: Bins) -> Source:
+    air = None
+    if light.attenuation == "air":
+        air = Air(
+            pressure=light.pressure,
+            ozone=light.ozone_du,
+            aerosol_depth_550=light.aerosol_depth,
+            aerosol_exponent=light.aerosol_exponent,
+        )
+    return sun(light.elevation, light.azimuth, bins, air, disc=light.disc == "sun")
+
+
+def _drops(drops: Drops, medium: str, bins: Bins, fallback: str) -> DropSheet:
+    if drops.index is not None:
+        index = material.constant(drops.index)
+    elif drops.index_table is not None:
+        index = material.tabulated(drops.index_table, medium)
+    else:
+        index = material.water(drops.temperature, medium)
+    index(bins.edges)  # asks for the whole range now, not in the middle of a job
+    if drops.place == "curtain":
+        amount = partial(curtain, optical_depth=drops.optical_depth, below_horizon=drops.below_horizon)
+    else:
+        amount = partial(layer, optical_depth=drops.optical_depth)
+    return DropSheet(drops.name or f"drops {fallback}", index, drops.radius, drops.orders, amount)
+
+
+def _directions(scene: Scene, source: Source) -> Directions:
+    camera = scene.camera
+    if camera.aim == "sun":
+        (azimuth, elevation), roll = azimuth_elevation(source.direction), 0.0
+    elif camera.aim == "antisolar":
+        (azimuth, elevation), roll = azimuth_elevation(-source.direction), 0.0
+    else:
+        azimuth, elevation, roll = np.asarray(camera.aim.azimuth), np.asarray(camera.aim.elevation), camera.aim.roll
+    columns, rows = camera.pixels
+    if camera.lens == "panorama":
+        return frame.panorama(camera.width, camera.height, (rows, columns), float(azimuth), float(elevation), roll)
+    rotation = frame.aim(float(azimuth), float(elevation), roll)
+    return frame.photograph(camera.lens, camera.focal, camera.sensor, (rows, columns), rotation)
+
+
+@contextmanager
+def _blame(where: str, key: str) -> Iterator[None]:
+    """Turn what the physics refuses into a fault of the scene."""
+    try:
+        yield
+    except (DomainError, DataFileError) as error:
+        raise SceneError([Fault(where, None, key, str(error))]) from error

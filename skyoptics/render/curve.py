@@ -1,0 +1,165 @@
+"""Scattering curves as tables to print: what ``skyoptics phase`` works out.
+
+Columns: wavelength_nm, angle_deg (bin centre), intensity (phase function, mean over the bin; mean 1 over the sphere for
+all orders together, so chosen orders keep their share; no diffraction in ray curves), polarization = (I⊥ − I∥) / (I⊥ + I∥)
+to the scattering plane, intensity_error (one standard error), index (real, at this wavelength).
+"""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Callable, Iterator
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from skyoptics.light.disc import sun_disc
+from skyoptics.materials import index as material
+from skyoptics.optics.axisymmetric import over_disc
+from skyoptics.optics.bins import Bins
+from skyoptics.optics.table import ScatteringTable
+from skyoptics.render.run import usable_cores
+from skyoptics.render.scatter import QUALITY, Progress, silent
+from skyoptics.units import CELSIUS_ZERO, DEG, NM, UM
+
+COLUMNS = ("wavelength_nm", "angle_deg", "intensity", "polarization", "intensity_error", "index")
+
+
+@dataclass(frozen=True)
+class DropCurve:
+    """What is asked of a drop's curve; human units, as the command line gives them."""
+
+    radius_um: float = 500.0
+    method: str = "rays"
+    wavelength_nm: tuple[float, ...] = (450.0, 550.0, 650.0)
+    temperature_c: float = 20.0
+    index: float | None = None
+    medium: str = "air"
+    orders: tuple[int, ...] | None = None
+    step_deg: float = 0.1
+    disc: bool = False
+    quality: str = "normal"
+    seed: int = 1
+    threads: int | None = None
+
+
+@dataclass(frozen=True, eq=False)
+class Curve:
+    """A curve, ready to be written.
+
+    Parameters
+    ----------
+    table : ScatteringTable
+        One part: the chosen orders together.
+    index : ndarray, shape (nλ,)
+        Real refractive index at each wavelength.
+    report : dict
+        Asymmetry, energies by order, absorbed, cut off, …; JSON types.
+    """
+
+    table: ScatteringTable
+    index: Any
+    report: dict[str, Any]
+
+
+def drop(asked: DropCurve, progress: Progress = silent) -> Curve:
+    """Return the curve of a drop by ray optics.
+
+    Parameters
+    ----------
+    asked : DropCurve
+        What is wanted.
+    progress : callable
+        Told about batches.
+
+    Raises
+    ------
+    DomainError
+        If the physics refuses a value.
+    """
+    from skyoptics.droplets import geometric
+
+    bins = Bins.lines(np.array(asked.wavelength_nm) * NM)
+    if asked.index is not None:
+        law = material.constant(asked.index)
+    else:
+        law = material.water(asked.temperature_c + CELSIUS_ZERO, asked.medium)
+    edges = geometric.uniform_edges(asked.step_deg * DEG)
+    with ThreadPoolExecutor(asked.threads or usable_cores()) as executor:
+        try:
+            whole = geometric.scattering_table(
+                law,
+                asked.radius_um * UM,
+                bins,
+                edges=edges,
+                seed=asked.seed,
+                relative_error=QUALITY[asked.quality],
+                executor=executor,
+                progress=lambda done, total: progress("tracing", done, total),
+            )
+        except BaseException:
+            executor.shutdown(wait=True, cancel_futures=True)
+            raise
+    orders = tuple(range(11)) if asked.orders is None else asked.orders
+    table = whole.select([str(order) for order in orders]).total()
+    if asked.disc:
+        table = over_disc(table, sun_disc(bins), table.angle)
+    report = {
+        "method": asked.method,
+        "particle": "drop",
+        "radius_um": asked.radius_um,
+        "wavelength_nm": list(asked.wavelength_nm),
+        "index": law(bins.centre).real.tolist(),
+        "medium": asked.medium if asked.index is None else "as given by --index",
+        "orders": list(orders),
+        "disc": asked.disc,
+        "asymmetry": whole.asymmetry.tolist(),
+        "energy_by_order": whole.report["energy"],
+        "absorbed": whole.report["absorbed"],
+        "cut_off": whole.report["cut_off"],
+        "rays": whole.report["rays"],
+        "relative_error": whole.report["relative_error"],
+        "brightest_deg": [float(table.angle[row] / DEG) for row in table.elements[0, :, :, 0].argmax(axis=0)],
+        "seed": asked.seed,
+    }
+    return Curve(table, law(bins.centre).real, report)
+
+
+def lines(curve: Curve) -> Iterator[str]:
+    """Yield the curve as CSV lines, the header first."""
+    yield ",".join(COLUMNS)
+    angle = [f"{value / DEG:.6g}" for value in curve.table.angle]
+    elements = curve.table.elements[0]
+    for column, wavelength in enumerate(curve.table.wavelength):
+        intensity = elements[:, column, 0]
+        with np.errstate(invalid="ignore", divide="ignore"):
+            polarization = np.where(intensity > 0.0, -elements[:, column, 1] / intensity, 0.0)
+        error = curve.table.error[0, :, column]
+        label, index = f"{wavelength / NM:.6g}", f"{curve.index[column]:.9g}"
+        for row in range(len(angle)):
+            yield f"{label},{angle[row]},{intensity[row]:.7g},{polarization[row]:.6f},{error[row]:.3g},{index}"
+
+
+def put_out(curve: Curve, csv: Path | None, as_json: bool, say: Callable[[str], Any]) -> None:
+    """Write the curve and say what it is; with `csv` "-" the curve itself goes to stdout."""
+    if csv is not None and str(csv) == "-":
+        say("\n".join(lines(curve)))
+    elif csv is not None:
+        from skyoptics.colour.images import replacing
+
+        with replacing(csv) as aside, aside.open("w", encoding="utf-8", newline="\n") as file:
+            file.writelines(f"{line}\n" for line in lines(curve))
+    if as_json:
+        say(json.dumps(curve.report))
+    elif csv is None or str(csv) != "-":
+        say("wavelength   index      brightest at   asymmetry")
+        rows = zip(
+            curve.table.wavelength, curve.index, curve.report["brightest_deg"], curve.table.asymmetry, strict=True
+        )
+        for wavelength, index, angle, asymmetry in rows:
+            say(f"{wavelength / NM:7.1f} nm   {index:.5f}   {angle:9.3f}°     {asymmetry:.4f}")
+        if csv is not None:
+            say(str(csv))

@@ -1,0 +1,223 @@
+"""The recipe of a render: build, scatter, look, develop, report."""
+
+from __future__ import annotations
+
+import os
+import time
+from collections.abc import Iterator
+from concurrent.futures import Executor, ThreadPoolExecutor
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+
+import skyoptics
+from skyoptics.colour.develop import Developed, develop
+from skyoptics.colour.observer import weights
+from skyoptics.render import memory
+from skyoptics.render.build import Job, build
+from skyoptics.render.caption import cautions, what_to_look_for
+from skyoptics.render.scatter import Progress, Traced, scatter, silent
+from skyoptics.scene.digest import scene_hash
+from skyoptics.scene.model import Scene
+from skyoptics.sky.compose import Sheet, radiance
+from skyoptics.units import Float32Array, FloatArray
+
+
+@dataclass(frozen=True)
+class Settings:
+    """How to render, apart from what.
+
+    Parameters
+    ----------
+    quality : str
+        "draft", "normal" or "fine".
+    seed : int
+        Of the random numbers; the same seed gives the same picture on any number of threads.
+    threads : int
+        Worker threads.
+    """
+
+    quality: str = "normal"
+    seed: int = 1
+    threads: int = field(default_factory=lambda: usable_cores())
+
+
+@dataclass(frozen=True, eq=False)
+class Result:
+    """A rendered picture before it becomes a file.
+
+    Parameters
+    ----------
+    job : Job
+        The physics that was looked at.
+    sheets : list of Sheet
+        What scattered.
+    xyz : ndarray of float32, shape (ny, nx, 3)
+        [cd m⁻²]; nan outside the image.
+    developed : Developed
+        Display colours.
+    report : dict
+        What was asked, done and reached; JSON types.
+    """
+
+    job: Job
+    sheets: list[Sheet]
+    xyz: Float32Array
+    developed: Developed
+    report: dict[str, Any]
+
+
+def usable_cores() -> int:
+    """Return the number of cores that this process may use."""
+    if hasattr(os, "sched_getaffinity"):
+        return len(os.sched_getaffinity(0))
+    return os.cpu_count() or 1
+
+
+def blocks(shape: tuple[int, int]) -> Iterator[slice]:
+    """Yield slices of rows that hold about `memory.BLOCK` pixels each, the same for any number of threads."""
+    step = max(1, memory.BLOCK // shape[1])
+    for start in range(0, shape[0], step):
+        yield slice(start, min(start + step, shape[0]))
+
+
+def look(
+    job: Job, sheets: list[Sheet], executor: Executor | None, progress: Progress = silent
+) -> Iterator[tuple[slice, FloatArray]]:
+    """Yield the radiance of the picture block by block, in order.
+
+    Parameters
+    ----------
+    job : Job
+        What to look at.
+    sheets : list of Sheet
+        From `skyoptics.render.scatter.scatter`.
+    executor : Executor or None
+        Looks ahead; None works in this thread.
+    progress : callable
+        Told about rows.
+
+    Yields
+    ------
+    rows : slice
+        Which rows.
+    block : ndarray, shape (rows, nx, nλ)
+        [W m⁻² sr⁻¹ nm⁻¹]
+    """
+    shape = job.directions.shape
+
+    def work(rows: slice) -> FloatArray:
+        return radiance(job.directions, rows, job.sources, sheets, job.background)
+
+    parts = list(blocks(shape))
+    if executor is None:
+        for rows in parts:
+            progress("looking", rows.stop, shape[0])
+            yield rows, work(rows)
+        return
+    ahead = 2 * getattr(executor, "_max_workers", 2)
+    waiting = [executor.submit(work, rows) for rows in parts[:ahead]]
+    for number, rows in enumerate(parts):
+        block = waiting.pop(0).result()
+        if number + ahead < len(parts):
+            waiting.append(executor.submit(work, parts[number + ahead]))
+        progress("looking", rows.stop, shape[0])
+        yield rows, block
+
+
+def render(scene: Scene, where: str, settings: Settings, progress: Progress = silent, data: bool = False) -> Result:
+    """Render a scene.
+
+    Parameters
+    ----------
+    scene : Scene
+        Checked description.
+    where : str
+        Name of its file, for faults and the report.
+    settings : Settings
+        Quality, seed, threads.
+    progress : callable
+        Told what goes on.
+    data : bool
+        Whether the whole radiance will be asked for; counts towards memory.
+
+    Returns
+    -------
+    Result
+
+    Raises
+    ------
+    SceneError
+        If the physics refuses a value.
+    ResourceError
+        If it would take too much memory.
+    """
+    start = time.perf_counter()
+    job = build(scene, where)
+    memory.check(memory.predict(job.directions.shape, job.bins, len(job.sheets), settings.threads, data))
+    with ThreadPoolExecutor(settings.threads) as executor:
+        try:
+            sheets, traced = scatter(job, settings.quality, settings.seed, executor, progress)
+            traced_at = time.perf_counter()
+            xyz = tristimulus(job, sheets, scene.picture.observer, executor, progress)
+        except BaseException:
+            executor.shutdown(wait=True, cancel_futures=True)
+            raise
+    looked_at = time.perf_counter()
+    developed = develop(xyz, scene.picture.exposure_ev)
+    times = {
+        "trace": traced_at - start,
+        "look": looked_at - traced_at,
+        "develop": time.perf_counter() - looked_at,
+    }
+    return Result(job, sheets, xyz, developed, report(scene, where, settings, job, traced, developed, xyz, times))
+
+
+def tristimulus(
+    job: Job, sheets: list[Sheet], observer: Any, executor: Executor | None, progress: Progress = silent
+) -> Float32Array:
+    """Return the picture's XYZ, shape (ny, nx, 3) [cd m⁻²]."""
+    matrix = weights(job.bins, observer)
+    xyz = np.empty((*job.directions.shape, 3), dtype=np.float32)
+    for rows, block in look(job, sheets, executor, progress):
+        xyz[rows] = block @ matrix
+    return xyz
+
+
+def report(
+    scene: Scene,
+    where: str,
+    settings: Settings,
+    job: Job,
+    traced: list[Traced],
+    developed: Developed,
+    xyz: Float32Array,
+    times: dict[str, float],
+) -> dict[str, Any]:
+    """Return what was asked, done and reached, in JSON types; no absolute path in it."""
+    luminance = xyz[..., 1][np.isfinite(xyz[..., 1])]
+    return {
+        "skyoptics": skyoptics.__version__,
+        "scene": os.path.basename(where),
+        "title": scene.title,
+        "scene_hash": scene_hash(scene),
+        "seed": settings.seed,
+        "quality": settings.quality,
+        "width_px": job.directions.shape[1],
+        "height_px": job.directions.shape[0],
+        "wavelength_bins": len(job.bins),
+        "exposure_ev": developed.exposure_ev,
+        "exposure_automatic": developed.automatic,
+        "luminance_cd_m2": {
+            "median": float(np.median(luminance)) if luminance.size else 0.0,
+            "highest": float(luminance.max(initial=0.0)),
+        },
+        "rolled_off_share": developed.clipped,
+        "out_of_gamut_share": developed.out_of_gamut,
+        "traced_rays": sum(how.summary()["traced_rays"] for how in traced),
+        "sheets": [how.summary() for how in traced],
+        "seconds": {name: round(value, 3) for name, value in times.items()},
+        "look_for": scene.look_for or what_to_look_for(job),
+        "cautions": cautions(job),
+    }

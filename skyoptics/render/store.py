@@ -1,0 +1,84 @@
+"""Finished tables, kept under their trace key and found again.
+
+The trace key is a hash of everything a table depends on: particles, spectral bins, angles, seed, target, kernels. What
+changes a picture without tracing again (exposure, amount, air, background, colour, the sun's disc on a table) is not in it.
+A file that cannot be read or is not what it says is set aside under another name, in words, and made anew.
+"""
+
+from __future__ import annotations
+
+import json
+import os
+import sys
+from hashlib import sha256
+from pathlib import Path
+from typing import Any
+from uuid import uuid4
+
+import numpy as np
+
+from skyoptics.optics.table import ScatteringTable
+
+FORMAT = 1
+_ARRAYS = ("angle", "wavelength", "elements", "error", "albedo", "asymmetry")
+
+
+def folder() -> Path:
+    """Return where tables are kept: ``SKYOPTICS_CACHE``, or the user's cache folder."""
+    from platformdirs import user_cache_path
+
+    base = os.environ.get("SKYOPTICS_CACHE")
+    return (Path(base) if base else user_cache_path("skyoptics", appauthor=False)) / "tables"
+
+
+def trace_key(**parts: Any) -> str:
+    """Return a hash, 32 hex digits, of what a table depends on; arrays by content, the rest as JSON."""
+    digest = sha256()
+    for name in sorted(parts):
+        value = parts[name]
+        digest.update(name.encode())
+        if isinstance(value, np.ndarray):
+            digest.update(np.ascontiguousarray(value).tobytes())
+        else:
+            digest.update(json.dumps(value, sort_keys=True).encode())
+    return digest.hexdigest()[:32]
+
+
+def find(key: str) -> ScatteringTable | None:
+    """Return a stored table, or None where there is none that can be used."""
+    path = folder() / f"{key}.npz"
+    if not path.exists():
+        return None
+    try:
+        with np.load(path, allow_pickle=False) as stored:
+            about = json.loads(str(stored["about"]))
+            if about["key"] != key or about["format"] != FORMAT:
+                raise ValueError("it belongs to another job")
+            arrays = {name: stored[name] for name in _ARRAYS}
+            edges = stored.get("edges")
+        return ScatteringTable(**arrays, parts=tuple(about["parts"]), edges=edges, report=about["report"])
+    except Exception as error:  # whatever is in the file: it is only a copy
+        aside = path.with_suffix(".broken")
+        sys.stderr.write(f"set aside a stored table that cannot be used ({error}); it is traced anew\n")
+        path.replace(aside)
+        return None
+
+
+def keep(key: str, table: ScatteringTable) -> bool:
+    """Store a table; a full disk or a read-only folder is no reason to fail, so return whether it was kept."""
+    path = folder() / f"{key}.npz"
+    aside = path.with_name(f"{path.name}.{uuid4().hex}.part")
+    about = json.dumps({"key": key, "format": FORMAT, "parts": table.parts, "report": table.report})
+    arrays = {name: getattr(table, name) for name in _ARRAYS}
+    if table.edges is not None:
+        arrays["edges"] = table.edges
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        with aside.open("wb") as file:
+            np.savez(file, about=np.array(about), **arrays)
+        aside.replace(path)
+    except OSError:
+        return False
+    finally:
+        aside.unlink(missing_ok=True)
+    return True
