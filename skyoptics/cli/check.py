@@ -23,7 +23,7 @@ def command(scenes: tuple[Path, ...]) -> int:
     for path in scenes:
         try:
             scene = load(path)
-            from skyoptics.render.build import build
+            from skyoptics.rendering.build import build
 
             build(scene, str(path))
         except SceneError as error:

@@ -69,7 +69,7 @@ def drop(**options: Any) -> None:
     Example: skyoptics phase drop --wavelength-nm 450,550,650 --orders 2,3 --step-deg 0.01 --csv bow.csv
     """
     from skyoptics.cli import progress
-    from skyoptics.render import curve
+    from skyoptics.rendering import curve
 
     progress.note_first_compilation()
     with progress.shown() as tell:

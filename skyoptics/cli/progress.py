@@ -9,7 +9,7 @@ from contextlib import contextmanager
 
 import click
 
-from skyoptics.render.scatter import Progress, silent
+from skyoptics.rendering.scatter import Progress, silent
 
 
 @contextmanager

@@ -45,8 +45,8 @@ def command(
     name = safe_name(scene)
     folder = out or Path("outputs", name)
     from skyoptics.cli import progress
-    from skyoptics.render import output
-    from skyoptics.render.run import Settings, render, usable_cores
+    from skyoptics.rendering import output
+    from skyoptics.rendering.run import Settings, render, usable_cores
 
     settings = Settings(quality, seed, threads or usable_cores())
     if dry_run:
@@ -80,7 +80,7 @@ def _command(
 
 def _estimate(scene: Any, path: Path, settings: Any, files: list[Path], data: bool, as_json: bool) -> None:
     """Print what a render would take."""
-    from skyoptics.render.estimate import estimate
+    from skyoptics.rendering.estimate import estimate
 
     wanted = estimate(scene, str(path), settings, data) | {"files": [str(file) for file in files]}
     if as_json:

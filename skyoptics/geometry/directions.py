@@ -221,6 +221,17 @@ class Directions:
         a, b, c, d = corner[:-1, :-1], corner[:-1, 1:], corner[1:, 1:], corner[1:, :-1]
         return np.nan_to_num(_triangle(a, b, c) + _triangle(a, c, d))
 
+    def pixel_size(self, rows: slice = slice(None)) -> FloatArray:
+        """Return the side of a square of each pixel's solid angle, shape (ny, nx) [rad].
+
+        On the scattering-angle axis (one cylindrical column) it is the height of a row; a pixel cut by the rim of the
+        image, which has no solid angle, gets the size on the axis.
+        """
+        solid = self.solid_angle(rows)
+        if self.kind == CYLINDRICAL:
+            return np.sqrt(solid) if self.shape[1] > 1 else np.full_like(solid, self.map[3])
+        return np.sqrt(np.where(solid > 0.0, solid, self.map[0] ** -2))
+
     def packed(self) -> Float32Array:
         """Return the grid as one float32 array for kernels.
 

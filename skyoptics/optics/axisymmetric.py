@@ -98,9 +98,7 @@ class Axisymmetric:
         curve = self.table.elements[..., 0].sum(axis=0) * (self.share / (4.0 * np.pi))
         if self.table.edges is None:
             return _interpolate(theta, self.table.angle, curve)
-        half = 0.5 * np.sqrt(directions.solid_angle(rows))
-        if directions.shape[1] == 1:  # a scattering-angle axis: its rows are its bins
-            half = np.broadcast_to(0.5 * abs(directions.map[3]), theta.shape)
+        half = 0.5 * directions.pixel_size(rows)
         cosine = np.cos(self.table.edges)
         running = np.zeros((len(cosine), curve.shape[1]))
         np.cumsum(curve * -np.diff(cosine)[:, None], axis=0, out=running[1:])

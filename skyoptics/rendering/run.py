@@ -14,10 +14,10 @@ import numpy as np
 import skyoptics
 from skyoptics.colour.develop import Developed, develop
 from skyoptics.colour.observer import weights
-from skyoptics.render import memory
-from skyoptics.render.build import Job, build
-from skyoptics.render.caption import cautions, what_to_look_for
-from skyoptics.render.scatter import Progress, Traced, scatter, silent
+from skyoptics.rendering import memory
+from skyoptics.rendering.build import Job, build
+from skyoptics.rendering.caption import cautions, what_to_look_for
+from skyoptics.rendering.scatter import Progress, Traced, scatter, silent
 from skyoptics.scene.digest import scene_hash
 from skyoptics.scene.model import Scene
 from skyoptics.sky.compose import Sheet, radiance
@@ -92,7 +92,7 @@ def look(
     job : Job
         What to look at.
     sheets : list of Sheet
-        From `skyoptics.render.scatter.scatter`.
+        From `skyoptics.rendering.scatter.scatter`.
     executor : Executor or None
         Looks ahead; None works in this thread.
     progress : callable

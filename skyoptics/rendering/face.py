@@ -20,11 +20,11 @@ from typing import TYPE_CHECKING, Any
 
 from skyoptics.colour.images import png_bytes
 from skyoptics.errors import DomainError, nearest
-from skyoptics.render import output
-from skyoptics.render.dataset import dataset
-from skyoptics.render.run import Result, Settings, usable_cores
-from skyoptics.render.run import render as run
-from skyoptics.render.scatter import QUALITY
+from skyoptics.rendering import output
+from skyoptics.rendering.dataset import dataset
+from skyoptics.rendering.run import Result, Settings, usable_cores
+from skyoptics.rendering.run import render as run
+from skyoptics.rendering.scatter import QUALITY
 from skyoptics.scene import load as scene_load
 from skyoptics.scene.files import safe_name
 from skyoptics.scene.model import Scene

@@ -10,7 +10,7 @@ import numpy as np
 
 from skyoptics.colour.images import replacing
 from skyoptics.geometry.axes import azimuth_elevation
-from skyoptics.render.run import Result, look
+from skyoptics.rendering.run import Result, look
 from skyoptics.units import DEG, NM
 
 if TYPE_CHECKING:

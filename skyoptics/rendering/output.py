@@ -11,8 +11,8 @@ import skyoptics
 from skyoptics.colour import images, metadata
 from skyoptics.colour.display import linear_rgb
 from skyoptics.errors import ResourceError
-from skyoptics.render import dataset
-from skyoptics.render.run import Result
+from skyoptics.rendering import dataset
+from skyoptics.rendering.run import Result
 from skyoptics.scene.model import Scene
 
 EXTRA = ("exr", "tiff")
@@ -68,7 +68,7 @@ def write(
     Parameters
     ----------
     result : Result
-        From `skyoptics.render.run.render`.
+        From `skyoptics.rendering.run.render`.
     scene : Scene
         For the depth of the PNG.
     folder : Path

@@ -21,8 +21,8 @@ from skyoptics.materials import index as material
 from skyoptics.optics.axisymmetric import over_disc
 from skyoptics.optics.bins import Bins
 from skyoptics.optics.table import ScatteringTable
-from skyoptics.render.run import usable_cores
-from skyoptics.render.scatter import QUALITY, Progress, silent
+from skyoptics.rendering.run import usable_cores
+from skyoptics.rendering.scatter import QUALITY, Progress, silent
 from skyoptics.units import CELSIUS_ZERO, DEG, NM, UM
 
 COLUMNS = ("wavelength_nm", "angle_deg", "intensity", "polarization", "intensity_error", "index")

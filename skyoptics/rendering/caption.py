@@ -6,7 +6,7 @@ import numpy as np
 
 from skyoptics.geometry.axes import angle_between, azimuth_elevation
 from skyoptics.optics import bows
-from skyoptics.render.build import Job
+from skyoptics.rendering.build import Job
 from skyoptics.units import DEG
 
 _NAMES = {2: "primary", 3: "secondary"}
@@ -40,7 +40,7 @@ def what_to_look_for(job: Job) -> str:
                 found.append(f"{_NAMES[order]} bow {angle / DEG:.1f}° from the antisolar point, its top {_height(top)}")
     if not found:
         return "light scattered by the particles over a plain background"
-    return f"look towards azimuth {azimuth / DEG:.0f}°: " + "; ".join(dict.fromkeys(found))
+    return f"look towards azimuth {round(float(azimuth / DEG)) % 360}°: " + "; ".join(dict.fromkeys(found))
 
 
 def cautions(job: Job) -> list[str]:

@@ -4,11 +4,11 @@ from __future__ import annotations
 
 from typing import Any
 
-from skyoptics.render import memory
-from skyoptics.render.build import build
-from skyoptics.render.run import Settings
-from skyoptics.render.scatter import drop_key, least_rays
-from skyoptics.render.store import find
+from skyoptics.rendering import memory
+from skyoptics.rendering.build import build
+from skyoptics.rendering.run import Settings
+from skyoptics.rendering.scatter import drop_key, least_rays
+from skyoptics.rendering.store import find
 from skyoptics.scene.model import Scene
 
 RAYS_PER_SECOND = 2.5e6

@@ -13,8 +13,8 @@ from skyoptics.optics.axisymmetric import Axisymmetric, over_disc
 from skyoptics.optics.bins import Bins
 from skyoptics.optics.source import Disc
 from skyoptics.optics.table import ScatteringTable
-from skyoptics.render import store
-from skyoptics.render.build import DropSheet, Job
+from skyoptics.rendering import store
+from skyoptics.rendering.build import DropSheet, Job
 from skyoptics.sky.compose import Sheet
 
 QUALITY = {"draft": 0.02, "normal": 0.01, "fine": 0.005}

@@ -10,6 +10,7 @@ from __future__ import annotations
 import json
 import os
 import sys
+from contextlib import suppress
 from hashlib import sha256
 from pathlib import Path
 from typing import Any
@@ -80,5 +81,6 @@ def keep(key: str, table: ScatteringTable) -> bool:
     except OSError:
         return False
     finally:
-        aside.unlink(missing_ok=True)
+        with suppress(OSError):
+            aside.unlink()
     return True
