@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from skyoptics.colour.display import automatic_exposure, bend_highlights, exposure_scale, linear_rgb
+from skyoptics.colour.display import adaptation, automatic_exposure, bend_highlights, exposure_scale, linear_rgb
 from skyoptics.colour.gamut import out_of_gamut, to_gamut
 from skyoptics.errors import DomainError
 from skyoptics.units import ArrayLike, Float32Array
@@ -41,7 +41,7 @@ class Developed:
     out_of_gamut: float
 
 
-def develop(xyz: ArrayLike, exposure_ev: float | None = None) -> Developed:
+def develop(xyz: ArrayLike, exposure_ev: float | None = None, white: ArrayLike | None = None) -> Developed:
     """Return a picture ready to be encoded and written.
 
     Parameters
@@ -50,6 +50,8 @@ def develop(xyz: ArrayLike, exposure_ev: float | None = None) -> Developed:
         [cd m⁻²]; a pixel with a value that is not finite lies outside the image and comes out black.
     exposure_ev : float, optional
         Exposure value at ISO 100 [EV]; metered if not given.
+    white : array_like, shape (3,), optional
+        XYZ of what is to look neutral; nothing is adapted if not given.
 
     Returns
     -------
@@ -72,6 +74,7 @@ def develop(xyz: ArrayLike, exposure_ev: float | None = None) -> Developed:
     if not np.isfinite(exposure):
         raise DomainError(f"exposure is {exposure} EV, it has to be a finite number")
     scale = exposure_scale(exposure)
+    matrix = None if white is None else adaptation(white).T
 
     flat = xyz.reshape(-1, 3)
     rgb = np.zeros(flat.shape, dtype=np.float32)
@@ -80,6 +83,8 @@ def develop(xyz: ArrayLike, exposure_ev: float | None = None) -> Developed:
         part = scale * flat[start : start + _CHUNK].astype(np.float64)
         finite = np.isfinite(part).all(axis=-1)
         part[~finite] = 0.0
+        if matrix is not None:
+            part = part @ matrix
         linear = bend_highlights(linear_rgb(part))
         rgb[start : start + _CHUNK] = to_gamut(linear)
         seen += int(finite.sum())

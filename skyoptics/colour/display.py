@@ -1,9 +1,11 @@
 """Absolute XYZ to what an sRGB display is told to show: primaries, exposure, shoulder, transfer curve.
 
-The white is D65 and nothing is adapted: a colour on the display has the chromaticity it has in the sky. Exposure is the
+The white is D65 and nothing is adapted unless a white is given: then a colour on the display has the chromaticity it has in
+the sky. With a white, XYZ is adapted by Bradford's transform, as a camera's white balance does. Exposure is the
 exposure value of a camera at ISO 100, so a larger value makes a darker picture.
 
-Sources: IEC 61966-2-1:1999 (primaries, transfer curve); ISO 2720:1974 (exposure meters: N²/t = L S / K, K = 12.5 cd s m⁻²).
+Sources: Lam, *Metamerism and colour constancy*, PhD thesis, University of Bradford (1985) (adaptation, matrix as in ICC.1);
+IEC 61966-2-1:1999 (primaries, transfer curve); ISO 2720:1974 (exposure meters: N²/t = L S / K, K = 12.5 cd s m⁻²).
 The metering rule and the shoulder are this program's own.
 """
 
@@ -14,12 +16,20 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from skyoptics.errors import DomainError
 from skyoptics.units import ArrayLike, FloatArray
 
 RGB_TO_XYZ: FloatArray = np.array([[0.4124, 0.3576, 0.1805], [0.2126, 0.7152, 0.0722], [0.0193, 0.1192, 0.9505]])
 """Linear sRGB to XYZ, Y = 1 for white, as printed in IEC 61966-2-1."""
 XYZ_TO_RGB: FloatArray = np.linalg.inv(RGB_TO_XYZ).astype(np.float64)
 """Its exact inverse; the standard prints four digits of it."""
+
+BRADFORD: FloatArray = np.array(
+    [[0.8951, 0.2664, -0.1614], [-0.7502, 1.7135, 0.0367], [0.0389, -0.0685, 1.0296]], dtype=np.float64
+)
+"""XYZ to the sharpened cone responses of Bradford's transform."""
+WHITE: FloatArray = RGB_TO_XYZ.sum(axis=1)
+"""XYZ of the display's white, Y = 1."""
 
 METER_CONSTANT = 12.5
 """K of reflected-light meters [cd s m⁻²]; with ISO 100 a surface of 0.125 · 2^EV cd m⁻² is exposed as middle grey."""
@@ -56,6 +66,34 @@ def linear_rgb(xyz: ArrayLike) -> NDArray[Any]:
     matrix = XYZ_TO_RGB.T
     dtype = np.float32 if xyz.dtype == np.float32 else np.float64
     result: NDArray[Any] = xyz.astype(dtype, copy=False) @ matrix.astype(dtype)
+    return result
+
+
+def adaptation(white: ArrayLike, display: ArrayLike = WHITE) -> FloatArray:
+    """Return the matrix that makes a white look like the display's white.
+
+    Parameters
+    ----------
+    white : array_like, shape (3,)
+        XYZ of what is to look neutral [any].
+    display : array_like, shape (3,)
+        XYZ of the white it is brought to, Y = 1 [1].
+
+    Returns
+    -------
+    ndarray, shape (3, 3)
+        XYZ → XYZ; luminance of the white itself is kept.
+
+    Raises
+    ------
+    DomainError
+        If the white has no luminance, or a cone response that is not positive.
+    """
+    white = np.asarray(white, dtype=np.float64)
+    if not white[1] > 0.0 or not np.all(BRADFORD @ white > 0.0):
+        raise DomainError("a white to adapt to needs light in every part of the spectrum; choose white = \"display\"")
+    gain = (BRADFORD @ np.asarray(display, dtype=np.float64)) / (BRADFORD @ (white / white[1]))
+    result: FloatArray = np.linalg.inv(BRADFORD) @ (gain[:, None] * BRADFORD)
     return result
 
 

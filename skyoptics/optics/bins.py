@@ -1,4 +1,4 @@
-"""Spectral bins: the wavelength axis of everything past `skyoptics.render.build`."""
+"""Spectral bins: the wavelength axis of everything past `skyoptics.rendering.build`."""
 
 from __future__ import annotations
 
@@ -85,13 +85,21 @@ class Bins:
         wavelength = np.asarray(wavelength, dtype=np.float64)
         values = np.asarray(values, dtype=np.float64)
         flat = values.reshape(len(wavelength), -1)
-        result = np.empty((len(self), flat.shape[1]))
-        for row, (low, high) in enumerate(self.edges):
-            inside = wavelength[(wavelength > low) & (wavelength < high)]
-            knots = np.concatenate([[low], inside, [high]])
-            samples = np.stack([np.interp(knots, wavelength, column, 0.0, 0.0) for column in flat.T], axis=1)
-            if high == low:
-                result[row] = samples[0]
-            else:
-                result[row] = np.trapezoid(samples, knots, axis=0) / (high - low)
+        low, high = self.edges.T
+        width = np.where(high > low, high - low, 1.0)
+        integral = (_running(high, wavelength, flat) - _running(low, wavelength, flat)) / width[:, None]
+        line = np.stack([np.interp(low, wavelength, column, 0.0, 0.0) for column in flat.T], axis=1)
+        result = np.where((high > low)[:, None], integral, line)
         return result.reshape((len(self), *values.shape[1:]))
+
+
+def _running(x: FloatArray, knots: FloatArray, values: FloatArray) -> FloatArray:
+    """Return the integral of a broken line (n, m) from its first knot to x (k,), shape (k, m)."""
+    step = np.diff(knots)
+    whole = np.zeros_like(values)
+    np.cumsum(0.5 * (values[1:] + values[:-1]) * step[:, None], axis=0, out=whole[1:])
+    x = np.clip(x, knots[0], knots[-1])
+    cell = np.clip(np.searchsorted(knots, x, side="right") - 1, 0, len(knots) - 2)
+    inside = (x - knots[cell])[:, None]
+    slope = (values[cell + 1] - values[cell]) / step[cell][:, None]
+    return whole[cell] + inside * (values[cell] + 0.5 * slope * inside)

@@ -5,6 +5,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from skyoptics.colour import display, observer
+from skyoptics.colour.display import adaptation, linear_rgb
+from skyoptics.errors import DomainError
 from skyoptics.optics.bins import Bins
 
 # Sharma, Wu & Dalal, Color Res. Appl. 30, 21 (2005), doi 10.1002/col.20070, Table 1.
@@ -230,3 +232,21 @@ def test_grey_highlights_follow_the_shoulder():
     grey = np.linspace(0.0, 5.0, 101)
     bent = display.bend_highlights(np.repeat(grey[:, None], 3, axis=1))
     np.testing.assert_allclose(bent[:, 1], display.roll_off(grey), rtol=1e-12)
+
+
+def test_bradford_between_d65_and_d50():
+    """D65 to D50 as commonly printed (Lam 1985; ICC.1 profiles hold the matrix to four digits)."""
+    d65, d50 = (0.95047, 1.0, 1.08883), (0.96422, 1.0, 0.82521)
+    printed = [
+        [1.0478112, 0.0228866, -0.0501270],
+        [0.0295424, 0.9904844, -0.0170491],
+        [-0.0092345, 0.0150436, 0.7521316],
+    ]
+    assert adaptation(d65, d50) == pytest.approx(np.array(printed), abs=1e-6)
+
+
+def test_a_white_becomes_the_displays():
+    warm = np.array([1.1, 1.0, 0.6]) * 300.0
+    assert linear_rgb(adaptation(warm) @ warm) == pytest.approx(300.0, rel=1e-9)
+    with pytest.raises(DomainError, match="white"):
+        adaptation([0.0, 0.0, 0.0])
