@@ -165,7 +165,8 @@ def render(scene: Scene, where: str, settings: Settings, progress: Progress = si
             executor.shutdown(wait=True, cancel_futures=True)
             raise
     looked_at = time.perf_counter()
-    developed = develop(xyz, scene.picture.exposure_ev)
+    white = job.sources[0].irradiance @ weights(job.bins, scene.picture.observer) if scene.picture.white == "light" else None
+    developed = develop(xyz, scene.picture.exposure_ev, white)
     times = {
         "trace": traced_at - start,
         "look": looked_at - traced_at,
@@ -209,6 +210,7 @@ def report(
         "wavelength_bins": len(job.bins),
         "exposure_ev": developed.exposure_ev,
         "exposure_automatic": developed.automatic,
+        "white": scene.picture.white,
         "luminance_cd_m2": {
             "median": float(np.median(luminance)) if luminance.size else 0.0,
             "highest": float(luminance.max(initial=0.0)),

@@ -1,0 +1,291 @@
+"""The scene as frozen, strict models: human units in the field names, SI values under the bare names.
+
+``radius_um`` is what the file says, ``radius`` the same in metres. Fields that may be left out because another one
+decides them hold ``None``; the bare names always give the value in force.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Mapping
+from typing import Annotated, Any, Literal
+
+from pydantic import AfterValidator, Discriminator, Field, Strict, Tag
+
+from skyoptics.errors import DomainError
+from skyoptics.scene.fields import listing, note, number, text
+from skyoptics.scene.particles import KINDS, AnyParticles, Drops, Particles
+from skyoptics.scene.table import Conflict, Table, distinct, one_turn
+from skyoptics.units import DEG, HPA, MM, NM
+
+__all__ = ["KINDS", "Aim", "Camera", "Drops", "Light", "Medium", "Particles", "Picture", "Scene", "Table"]
+
+FOCAL_MM = 24.0
+SENSOR_MM = (36.0, 24.0)
+PANORAMA_DEG = (360.0, 180.0)
+WIDTH_PX = 1200
+MOST_PIXELS = 30000
+RECTILINEAR_LIMIT_DEG = 80.0
+"""Half the diagonal field at which a rectilinear picture is refused: the corners are stretched 33 times there."""
+
+
+class Light(Table):
+    """The sun, and what the air takes out of its light."""
+
+    elevation_deg: Annotated[float, number(-1, 90, "degrees", "Height of the sun's centre above the horizon")]
+    azimuth_deg: Annotated[
+        float, number(-360, 360, "degrees", "Azimuth of the sun, clockwise from north"), AfterValidator(one_turn)
+    ] = 180.0
+    disc: Annotated[
+        Literal["sun", "point"], note("The sun's limb-darkened disc, or a point of the same irradiance")
+    ] = "sun"
+    attenuation: Annotated[
+        Literal["air", "none"], note("Whether sunlight is weakened on its way through the atmosphere")
+    ] = "air"
+    ozone_du: Annotated[float, number(0, 1000, "DU", "Ozone column")] = 300.0
+    aerosol_depth: Annotated[float, number(0, 5, "", "Vertical optical depth of the haze at 550 nm")] = 0.1
+    aerosol_exponent: Annotated[
+        float, number(0, 3, "", "Ångström exponent of the haze: its optical depth goes as wavelength to minus this")
+    ] = 1.3
+    pressure_hpa: Annotated[float, number(100, 1100, "hPa", "Air pressure at the observer")] = 1013.25
+
+    @property
+    def elevation(self) -> float:
+        """Elevation [rad]."""
+        return self.elevation_deg * DEG
+
+    @property
+    def azimuth(self) -> float:
+        """Azimuth [rad]."""
+        return self.azimuth_deg * DEG
+
+    @property
+    def pressure(self) -> float:
+        """Air pressure [Pa]."""
+        return self.pressure_hpa * HPA
+
+
+class Medium(Table):
+    """What the particles float in."""
+
+    kind: Annotated[
+        Literal["air", "vacuum"],
+        note("What refractive indices are taken relative to; moves a bow by 0.05 to 0.1 degrees"),
+    ] = "air"
+
+
+class Aim(Table):
+    """Where the camera points."""
+
+    azimuth_deg: Annotated[
+        float,
+        number(-360, 360, "degrees", "Azimuth of the picture's centre, clockwise from north"),
+        AfterValidator(one_turn),
+    ]
+    elevation_deg: Annotated[float, number(-90, 90, "degrees", "Elevation of the picture's centre")]
+    roll_deg: Annotated[
+        float,
+        number(-360, 360, "degrees", "Turn of the camera about its line of sight, clockwise as the camera sees it"),
+    ] = 0.0
+
+    @property
+    def azimuth(self) -> float:
+        """Azimuth [rad]."""
+        return self.azimuth_deg * DEG
+
+    @property
+    def elevation(self) -> float:
+        """Elevation [rad]."""
+        return self.elevation_deg * DEG
+
+    @property
+    def roll(self) -> float:
+        """Roll [rad]."""
+        return self.roll_deg * DEG
+
+
+_Word = Annotated[Literal["sun", "antisolar"], Tag("word")]
+_Size = Annotated[float, Field(ge=1, le=1000)]
+
+
+class Camera(Table):
+    """Who looks: lens, sensor, picture size and aim."""
+
+    lens: Annotated[
+        Literal["rectilinear", "equidistant", "equisolid", "stereographic", "orthographic", "panorama"],
+        note("Projection: the ordinary lens, four fisheyes, or longitude and latitude"),
+    ] = "rectilinear"
+    focal_mm: Annotated[float | None, number(0.5, 5000, "mm", "Focal length; not for a panorama", default=FOCAL_MM)] = (
+        None
+    )
+    sensor_mm: Annotated[
+        tuple[_Size, _Size] | None,
+        Strict(False),
+        note("Width and height of the sensor; not for a panorama", unit="mm", default=list(SENSOR_MM)),
+    ] = None
+    width_px: Annotated[
+        int | None,
+        number(
+            1, MOST_PIXELS, "pixels", f"Width of the picture; left out, it follows from the height, or is {WIDTH_PX}"
+        ),
+    ] = None
+    height_px: Annotated[
+        int | None, number(1, MOST_PIXELS, "pixels", "Height of the picture; left out, it follows from the width")
+    ] = None
+    width_deg: Annotated[
+        float | None,
+        number(0, 360, "degrees", "Width of a panorama, in azimuth", above=True, default=PANORAMA_DEG[0]),
+    ] = None
+    height_deg: Annotated[
+        float | None,
+        number(0, 180, "degrees", "Height of a panorama, in elevation", above=True, default=PANORAMA_DEG[1]),
+    ] = None
+    aim: Annotated[
+        _Word | Annotated[Aim, Tag("table")],
+        Discriminator(lambda value: "table" if isinstance(value, dict | Aim) else "word"),
+        note("What the picture's centre looks at: the sun, the point opposite it, or a direction"),
+    ] = "antisolar"
+
+    @property
+    def focal(self) -> float:
+        """Focal length [m]; a panorama has none and raises `DomainError`."""
+        if self.lens == "panorama":
+            raise DomainError("a panorama has no focal length; its field is width_deg by height_deg")
+        return (FOCAL_MM if self.focal_mm is None else self.focal_mm) * MM
+
+    @property
+    def sensor(self) -> tuple[float, float]:
+        """Width and height of the sensor [m]; a panorama has none and raises `DomainError`."""
+        if self.lens == "panorama":
+            raise DomainError("a panorama has no sensor; its field is width_deg by height_deg")
+        width_mm, height_mm = self.sensor_mm or SENSOR_MM
+        return width_mm * MM, height_mm * MM
+
+    @property
+    def width(self) -> float:
+        """Width of a panorama [rad]."""
+        return (PANORAMA_DEG[0] if self.width_deg is None else self.width_deg) * DEG
+
+    @property
+    def height(self) -> float:
+        """Height of a panorama [rad]."""
+        return (PANORAMA_DEG[1] if self.height_deg is None else self.height_deg) * DEG
+
+    @property
+    def pixels(self) -> tuple[int, int]:
+        """Columns and rows of the picture."""
+        columns, rows = _pixels(dict(self))
+        return columns, rows
+
+    @classmethod
+    def conflicts(cls, values: Mapping[str, Any]) -> Iterator[Conflict]:
+        """Yield keys of the wrong kind of lens, too wide a field and a picture side that comes out too long."""
+        lens = values.get("lens")
+        given = [key for key, value in values.items() if value is not None]
+        if lens == "panorama":
+            for key in ("focal_mm", "sensor_mm"):
+                if key in given:
+                    yield key, 'not for lens = "panorama", whose field is width_deg by height_deg'
+        elif lens is not None:
+            for key in ("width_deg", "height_deg"):
+                if key in given:
+                    yield key, f'only for lens = "panorama"; for "{lens}" use focal_mm and sensor_mm'
+        if lens == "rectilinear" and "focal_mm" in values and "sensor_mm" in values:
+            half_diagonal_mm = math.hypot(*(values["sensor_mm"] or SENSOR_MM)) / 2.0
+            half_field_deg = math.atan(half_diagonal_mm / (values["focal_mm"] or FOCAL_MM)) / DEG
+            if half_field_deg >= RECTILINEAR_LIMIT_DEG:
+                shortest_mm = half_diagonal_mm / math.tan(RECTILINEAR_LIMIT_DEG * DEG)
+                yield (
+                    "focal_mm" if "focal_mm" in given else "sensor_mm",
+                    f"half the diagonal field is {half_field_deg:.1f} degrees; a rectilinear picture must stay below "
+                    f"{RECTILINEAR_LIMIT_DEG:g}: take a focal length above {shortest_mm:.2f} mm, a smaller sensor, or "
+                    f'a fisheye such as lens = "equidistant"',
+                )
+        shape_keys = ("width_deg", "height_deg") if lens == "panorama" else ("sensor_mm",)
+        if {"lens", "width_px", "height_px", *shape_keys} <= values.keys():
+            columns, rows = _pixels(values)
+            for key, other, side in (("width_px", "height_px", columns), ("height_px", "width_px", rows)):
+                if side > MOST_PIXELS:
+                    source = " and ".join(name for name in (other, *shape_keys) if name in given) or "the default width"
+                    yield key, f"comes out as {side} pixels from {source}; must lie between 1 and {MOST_PIXELS} pixels"
+
+
+def _pixels(values: Mapping[str, Any]) -> tuple[int, int]:
+    """Return columns and rows, the missing one from the aspect of the sensor or panorama."""
+    columns, rows = values["width_px"], values["height_px"]
+    if values["lens"] == "panorama":
+        width, height = values["width_deg"] or PANORAMA_DEG[0], values["height_deg"] or PANORAMA_DEG[1]
+    else:
+        width, height = values["sensor_mm"] or SENSOR_MM
+    if columns is None:
+        # A minute height_deg makes the quotient overflow to infinity, which no pixel count can hold.
+        columns = WIDTH_PX if rows is None else max(1, round(min(rows * (width / height), 1e9)))
+    if rows is None:
+        rows = max(1, round(min(columns * (height / width), 1e9)))
+    return columns, rows
+
+
+class Picture(Table):
+    """What comes out: wavelengths, brightness and colour."""
+
+    wavelengths_nm: Annotated[
+        tuple[Annotated[float, Field(ge=300, le=1100)], ...] | None,
+        Strict(False),
+        listing("Exactly these wavelengths; left out with bin_nm, the standard bins are taken", "nm"),
+        AfterValidator(lambda entries: None if entries is None else distinct(entries)),
+    ] = None
+    bin_nm: Annotated[
+        float | None, number(0.5, 100, "nm", "Bins of this width through the visible, instead of wavelengths_nm")
+    ] = None
+    exposure_ev: Annotated[
+        float | None, number(-20, 40, "EV", "Exposure; left out, it is chosen from the picture's brightness")
+    ] = None
+    background: Annotated[
+        float, number(0, 1e6, "W m⁻² sr⁻¹ nm⁻¹", "Spectral radiance of the sky behind, the same at every wavelength")
+    ] = 0.01
+    ground: Annotated[float, number(0, 1, "", "Share of the background's radiance seen below the horizon")] = 0.25
+    white: Annotated[
+        Literal["display", "light"],
+        note(
+            "What looks neutral: equal to the display's white (nothing is adapted), or the light that falls on the "
+            "particles"
+        ),
+    ] = "display"
+    observer: Annotated[
+        Literal["1931", "1964"], note("CIE standard observer: 1931 (2 degrees) or 1964 (10 degrees)")
+    ] = "1931"
+    depth_bits: Annotated[Literal[8, 16], note("Bits per channel of the picture file", unit="bits")] = 8
+
+    @property
+    def wavelengths(self) -> tuple[float, ...] | None:
+        """Wavelengths [m]."""
+        return None if self.wavelengths_nm is None else tuple(value * NM for value in self.wavelengths_nm)
+
+    @property
+    def bin(self) -> float | None:
+        """Width of a bin [m]."""
+        return None if self.bin_nm is None else self.bin_nm * NM
+
+    @classmethod
+    def conflicts(cls, values: Mapping[str, Any]) -> Iterator[Conflict]:
+        """Yield the conflict between wavelengths_nm and bin_nm."""
+        if values.get("wavelengths_nm") is not None and values.get("bin_nm") is not None:
+            yield "bin_nm", "cannot stand beside wavelengths_nm; keep one of the two"
+
+
+class Scene(Table):
+    """A whole scene: what lights it, what floats in the air, who looks, what comes out."""
+
+    title: Annotated[str | None, text(200, "Title of the picture")] = None
+    look_for: Annotated[str | None, text(500, "One sentence on what to look for in the picture")] = None
+    light: Annotated[Light, note("What lights the scene")]
+    medium: Annotated[Medium, note("What the particles float in")] = Medium()
+    air: Annotated[
+        tuple[AnyParticles, ...],
+        Strict(False),
+        Field(
+            min_length=1, max_length=100, description="What floats in the air, one [[air]] table per kind of particle"
+        ),
+    ]
+    camera: Annotated[Camera, note("Who looks")] = Camera()
+    picture: Annotated[Picture, note("What comes out")] = Picture()
