@@ -37,4 +37,4 @@ if "NUMBA_CACHE_DIR" not in os.environ:
     if "numba" in sys.modules:
         import numba
 
-        numba.config.CACHE_DIR = os.environ["NUMBA_CACHE_DIR"]
+        setattr(numba.config, "CACHE_DIR", os.environ["NUMBA_CACHE_DIR"])  # noqa: B010 (numba declares it nowhere)

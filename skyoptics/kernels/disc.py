@@ -12,6 +12,8 @@ integrands are smooth, so twelve Gauss points do.
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from numba import njit
 
@@ -19,7 +21,7 @@ POWERS = 6
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _arc(theta, theta0, radius, node, weight, out):
+def _arc(theta: float, theta0: float, radius: float, node: Any, weight: Any, out: Any) -> None:
     """Fill out[j] with the weight of the circle at theta for brightness µ^j."""
     t = theta - theta0
     whole = 2.0 * np.sin(0.5 * radius) ** 2
@@ -50,7 +52,19 @@ def _arc(theta, theta0, radius, node, weight, out):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def disc_average(centre, knots, linear, values, variance, radius, darkening, node, weight, out, out_variance):
+def disc_average(
+    centre: Any,
+    knots: Any,
+    linear: bool,
+    values: Any,
+    variance: Any,
+    radius: float,
+    darkening: Any,
+    node: Any,
+    weight: Any,
+    out: Any,
+    out_variance: Any,
+) -> None:
     """Average values over a disc around each centre.
 
     centre (m,); knots: bin edges (nv + 1) or, linear, nodes (nv,); values (nv, nλ, ne); variance (nv, nλ); darkening

@@ -21,6 +21,8 @@ Dimension numbers (one table for all tracers):
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from numba import njit
 
@@ -44,7 +46,7 @@ def batch_key(seed: int, spectral_bin: int, batch: int) -> tuple[np.uint32, np.u
 
 
 @njit(cache=True, nogil=True, error_model="numpy", inline="always")
-def mix32(x):
+def mix32(x: Any) -> Any:
     """Mix one uint32 (bias of single output bits below 0.2 %)."""
     x = np.uint32(x ^ (x >> np.uint32(16)))
     x = np.uint32(x * np.uint32(0x7FEB352D))
@@ -54,13 +56,13 @@ def mix32(x):
 
 
 @njit(cache=True, nogil=True, error_model="numpy", inline="always")
-def hash32(key_low, key_high, ray, dimension):
+def hash32(key_low: Any, key_high: Any, ray: Any, dimension: Any) -> Any:
     """Return 32 random bits for one ray (uint32) and one dimension (uint32) of a batch."""
     offset = mix32(np.uint32(key_high + np.uint32(dimension) * np.uint32(0x9E3779B9)))  # constant in a batch: hoisted
     return mix32(np.uint32(mix32(np.uint32(key_low ^ np.uint32(ray))) + offset))
 
 
 @njit(cache=True, nogil=True, error_model="numpy", inline="always")
-def uniform(key_low, key_high, ray, dimension):
+def uniform(key_low: Any, key_high: Any, ray: Any, dimension: Any) -> Any:
     """Return a float64 in the open interval (0, 1)."""
     return (np.float64(hash32(key_low, key_high, ray, dimension)) + 0.5) * 2.0**-32

@@ -165,7 +165,11 @@ def render(scene: Scene, where: str, settings: Settings, progress: Progress = si
             executor.shutdown(wait=True, cancel_futures=True)
             raise
     looked_at = time.perf_counter()
-    white = job.sources[0].irradiance @ weights(job.bins, scene.picture.observer) if scene.picture.white == "light" else None
+    white = (
+        job.sources[0].irradiance @ weights(job.bins, scene.picture.observer)
+        if scene.picture.white == "light"
+        else None
+    )
     developed = develop(xyz, scene.picture.exposure_ev, white)
     times = {
         "trace": traced_at - start,
