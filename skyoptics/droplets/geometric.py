@@ -8,23 +8,19 @@ lit side only.
 
 from __future__ import annotations
 
-import os
-from collections import deque
-from collections.abc import Callable, Iterator
-from itertools import islice, pairwise
-from math import ceil
-from typing import Any, Protocol
+from collections.abc import Callable
 
 import numpy as np
 from numpy.typing import NDArray
 
+from skyoptics.droplets.angles import default_edges
 from skyoptics.errors import DomainError
 from skyoptics.kernels import KERNEL_HASH, sphere
 from skyoptics.kernels.random import batch_key
-from skyoptics.optics import bows
+from skyoptics.optics.batches import Executor, batches_needed, in_order
 from skyoptics.optics.bins import Bins
 from skyoptics.optics.table import ScatteringTable
-from skyoptics.units import DEG, ArrayLike, ComplexArray, FloatArray
+from skyoptics.units import ArrayLike, ComplexArray, FloatArray
 
 PARTS = tuple(str(p) for p in range(sphere.ORDERS))
 """Names of the table's parts: p = 0 external reflection, 1 direct transmission, 2 primary bow, 3 secondary, … 10."""
@@ -41,91 +37,6 @@ _MOST_NODES = 1025
 _NODE_ERROR = (
     1e-7  # of the index, allowed between nodes of the table in a spectral bin: moves the bow of p = 10 by 1e-4°
 )
-_GUARD = 1e-12  # rad; rounding must not carry light over an edge that stands on a caustic
-
-# Width of angle bins around the caustics of order p [°]: at the caustic, on its lit side over `shelf`, growing beyond
-_CAUSTICS = {
-    2: {"core": 0.008, "lit": 0.02, "shelf": 2.5},
-    3: {"core": 0.008, "lit": 0.02, "shelf": 2.5},
-    4: {"core": 0.009, "lit": 0.05, "shelf": 3.0},
-    5: {"core": 0.009, "lit": 0.05, "shelf": 3.0},
-    6: {"core": 0.009, "lit": 0.05, "shelf": 3.0},
-}
-_WIDE_CORE = {4: 0.045, 5: 0.045, 6: 0.045}  # where a bin's own width smears the caustic anyway
-_GROWTH = 0.15  # of the width per unit of distance
-_WIDEST = 0.25
-_END = 0.02
-
-
-class Executor(Protocol):
-    """Anything with `submit`: a pool of threads or processes, a cluster's client."""
-
-    def submit(self, fn: Callable[..., Any], /, *args: Any) -> Any:
-        """Start a call; return something with `result()`."""
-
-
-def uniform_edges(step: float) -> FloatArray:
-    """Return edges of angle bins of one width from 0 to π.
-
-    Parameters
-    ----------
-    step : float
-        Width wanted [rad]; rounded so that a whole number of bins fits.
-
-    Returns
-    -------
-    ndarray, shape (nθ + 1,)
-        [rad]
-
-    Raises
-    ------
-    DomainError
-        If the step does not lie between 0.0001° and 180°.
-    """
-    if not 1e-4 * DEG * 0.999 <= step <= np.pi:
-        raise DomainError(f"angle bins may be 0.0001 to 180 degrees wide, not {step / DEG:g}")
-    return np.linspace(0.0, np.pi, max(round(np.pi / step), 1) + 1)
-
-
-def default_edges(index: IndexLaw, bins: Bins) -> FloatArray:
-    """Return uneven edges of angle bins fit for pictures: fine where bows stand, coarse elsewhere.
-
-    Parameters
-    ----------
-    index : callable
-        Wavelengths [m] → complex index relative to the air.
-    bins : Bins
-        Spectral bins.
-
-    Returns
-    -------
-    ndarray, shape (nθ + 1,)
-        From 0 to π [rad]. At most 0.01° over the caustics of p = 2 and 3 of all wavelengths, 0.02° over 2.5° on the lit
-        side; at most 0.05° around those of p = 4 … 6; growing away from there to 0.25°; finer at both ends. A bin of a
-        single wavelength has an edge on each closed-form caustic (moved by 1e-12 rad into the dark, against rounding) and
-        bins of at most 0.01° beside it for p = 4 … 6 too.
-    """
-    grid = np.linspace(0.0, 180.0, 36001)
-    width = np.minimum(_WIDEST, _END + _GROWTH * np.minimum(grid, 180.0 - grid))
-    wavelength = bins.edges[:, :1] + np.linspace(0.0, 1.0, 5) * bins.width[:, None]
-    n = np.real(_law(index, wavelength.ravel())).reshape(wavelength.shape)
-    single = bins.width == 0.0
-    fixed = [np.zeros(1), np.full(1, 180.0)]
-    for p, shape in _CAUSTICS.items():
-        caustic, side = bows.scattering_angle(n, p) / DEG, bows.side(n, p)
-        there = np.isfinite(caustic[:, 0])
-        for lines in (True, False):
-            rows = there & (single == lines)
-            low, high = caustic[rows].min(axis=1), caustic[rows].max(axis=1)
-            core = shape["core"] if lines else _WIDE_CORE.get(p, shape["core"])
-            for sense in (1.0, -1.0):
-                lit, dark = _distances(grid, low, high, sense, side[rows, 0] == sense)
-                near = np.where(lit <= shape["shelf"], shape["lit"], shape["lit"] + _GROWTH * (lit - shape["shelf"]))
-                lit_width = np.minimum(np.maximum(core + _GROWTH * lit, core), near)
-                width = np.minimum(width, np.minimum(lit_width, core + 2.0 * _GROWTH * dark))
-        rows = there & single
-        fixed.append(caustic[rows, 0] - side[rows, 0] * _GUARD / DEG)
-    return _fill(grid, width, np.concatenate(fixed)) * DEG
 
 
 def scattering_table(
@@ -180,7 +91,7 @@ def scattering_table(
     Notes
     -----
     For the size of drops for which ray optics holds see the top of this module. The index is linear between at least 17
-    nodes in each bin; the report states the largest error of that (`index_error`), at most 1e-7 for smooth laws.
+    nodes in each bin; the report states the largest error of that (`index_error`), at most 1e-7 in bins within the visible.
     """
     validate(radius, relative_error, max_batches, edges)
     edges = default_edges(index, bins) if edges is None else np.asarray(edges, dtype=np.float64)
@@ -195,16 +106,13 @@ def scattering_table(
             for batch in range(done, needed)
             for row in range(len(bins))
         )
-        for number, result in enumerate(_in_order(tasks, executor), start=done * len(bins)):
+        for number, result in enumerate(in_order(_batch, tasks, executor), start=done * len(bins)):
             sums.add(number % len(bins), result)
             if progress is not None:
                 progress(number + 1, needed * len(bins))
         done = needed
         error = float(sums.relative_error(done).max())
-        if error > relative_error:
-            # errors fall with the root of the number of batches; at most doubled at once, since the guess is a rough one
-            wanted = ceil(done * (error / relative_error) ** 2 * 1.05)
-            needed = min(max(wanted, done + 2), 2 * done, max_batches)
+        needed = batches_needed(done, error, relative_error, max_batches)
     table = sums.table(edges, bins, done)
     table.report.update(
         method="rays",
@@ -334,23 +242,6 @@ def _batch(
     return result
 
 
-def _in_order(tasks: Iterator[tuple[Any, ...]], executor: Executor | None) -> Iterator[Any]:
-    """Run tasks and yield their results in the order given, a bounded number of them on the way."""
-    if executor is None:
-        for task in tasks:
-            yield _batch(*task)
-        return
-    pending = deque(executor.submit(_batch, *task) for task in islice(tasks, 4 * (os.cpu_count() or 4)))
-    try:
-        while pending:
-            result = pending.popleft().result()
-            pending.extend(executor.submit(_batch, *task) for task in islice(tasks, 1))
-            yield result
-    finally:
-        for future in pending:
-            future.cancel()
-
-
 def _law(index: IndexLaw, wavelength: FloatArray) -> ComplexArray:
     """Evaluate the index and refuse what rays cannot handle."""
     values = np.broadcast_to(np.asarray(index(wavelength), dtype=np.complex128), wavelength.shape)
@@ -376,8 +267,7 @@ def _nodes(index: IndexLaw, radius: float, bins: Bins) -> tuple[FloatArray, Floa
     count = 17
     while True:
         # twice as fine as the table, to see what lies between its nodes
-        place = np.linspace(0.0, 1.0, 2 * count - 1)
-        wavelength = bins.edges[:, :1] + place * bins.width[:, None]
+        wavelength = bins.at(np.linspace(0.0, 1.0, 2 * count - 1))
         values = _law(index, wavelength.ravel()).reshape(wavelength.shape)
         middle = 0.5 * (values.real[:, :-2:2] + values.real[:, 2::2])
         error = float(np.abs(values.real[:, 1::2] - middle).max())
@@ -387,35 +277,3 @@ def _nodes(index: IndexLaw, radius: float, bins: Bins) -> tuple[FloatArray, Floa
     table = values[:, ::2]
     depth = 4.0 * np.pi * table.imag * 2.0 * radius / wavelength[:, ::2]
     return np.ascontiguousarray(table.real), np.ascontiguousarray(depth), error
-
-
-def _distances(
-    grid: FloatArray, low: FloatArray, high: FloatArray, sense: float, chosen: Any
-) -> tuple[FloatArray, FloatArray]:
-    """Return the distance of each grid point from the nearest interval, on its lit and on its dark side (inf: none).
-
-    `sense` is +1 where light lies towards larger angles; points inside an interval have distance 0 on both.
-    """
-    above = np.full_like(grid, np.inf)
-    below = np.full_like(grid, np.inf)
-    for start, stop in zip(low[chosen], high[chosen], strict=True):
-        above = np.minimum(above, np.where(grid >= start, np.maximum(grid - stop, 0.0), np.inf))
-        below = np.minimum(below, np.where(grid <= stop, np.maximum(start - grid, 0.0), np.inf))
-    return (above, below) if sense > 0.0 else (below, above)
-
-
-def _fill(grid: FloatArray, width: FloatArray, fixed: FloatArray) -> FloatArray:
-    """Return edges that include the fixed ones, spaced by `width` between them [°]."""
-    fixed = np.unique(fixed)
-    fixed = fixed[np.concatenate([[True], np.diff(fixed) > 1e-9])]
-    fixed[-1] = 180.0
-    # number of bins from 0 up to each angle; 1/width is summed by trapezoids
-    density = 1.0 / width
-    count = np.concatenate([[0.0], np.cumsum(0.5 * (density[1:] + density[:-1]) * np.diff(grid))])
-    pieces = []
-    for start, stop in pairwise(fixed):
-        at = np.interp([start, stop], grid, count)
-        number = max(ceil(at[1] - at[0]), 1)
-        inner = np.interp(np.linspace(at[0], at[1], number + 1)[1:-1], count, grid)
-        pieces.append(np.concatenate([[start], inner]))
-    return np.concatenate([*pieces, fixed[-1:]])

@@ -67,6 +67,11 @@ class Bins:
         width = self.width / NM
         return np.where(width > 0.0, width, 1.0)
 
+    def at(self, place: ArrayLike) -> FloatArray:
+        """Return wavelengths at places 0 … 1 (m,) in each bin, never outside it by rounding; shape (nλ, m) [m]."""
+        low, high = self.edges[:, :1], self.edges[:, 1:]
+        return np.clip(low + np.asarray(place, dtype=np.float64) * (high - low), low, high)
+
     def mean(self, wavelength: ArrayLike, values: ArrayLike) -> FloatArray:
         """Return the mean over each bin of a curve that is linear between its samples.
 

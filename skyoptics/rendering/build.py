@@ -13,6 +13,8 @@ from functools import partial
 import numpy as np
 
 from skyoptics.camera import frame
+from skyoptics.crystals.orientations import Orientation
+from skyoptics.crystals.shapes import Shape, hexagonal_prism
 from skyoptics.errors import DataFileError, DomainError, Fault, SceneError
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.geometry.directions import Directions
@@ -21,7 +23,8 @@ from skyoptics.light.sun import sun
 from skyoptics.materials import index as material
 from skyoptics.optics.bins import Bins
 from skyoptics.optics.source import Source
-from skyoptics.scene.model import Drops, Light, Scene
+from skyoptics.scene.model import Light, Scene
+from skyoptics.scene.particles import Crystals, Drops
 from skyoptics.sky.amount import curtain, layer
 from skyoptics.sky.compose import Background
 from skyoptics.units import NM, FloatArray
@@ -57,6 +60,34 @@ class DropSheet:
 
 
 @dataclass(frozen=True, eq=False)
+class CrystalSheet:
+    """Crystals of one shape, how they stand and where they hang.
+
+    Parameters
+    ----------
+    name : str
+        For reports.
+    index : RefractiveIndex
+        Of the ice, relative to what it floats in.
+    shape : Shape
+        The crystal.
+    orientation : Orientation
+        Its law.
+    diameter : float
+        Across corners [m]; for absorption.
+    amount : callable
+        Elevation [rad] → amount [1].
+    """
+
+    name: str
+    index: material.RefractiveIndex
+    shape: Shape
+    orientation: Orientation
+    diameter: float
+    amount: Callable[[FloatArray], FloatArray]
+
+
+@dataclass(frozen=True, eq=False)
 class Job:
     """A scene as physics.
 
@@ -66,7 +97,7 @@ class Job:
         Wavelength axis.
     sources : tuple of Source
         What shines.
-    sheets : tuple of DropSheet
+    sheets : tuple of DropSheet or CrystalSheet
         What scatters.
     directions : Directions
         The picture's pixels.
@@ -76,7 +107,7 @@ class Job:
 
     bins: Bins
     sources: tuple[Source, ...]
-    sheets: tuple[DropSheet, ...]
+    sheets: tuple[DropSheet | CrystalSheet, ...]
     directions: Directions
     background: Background
 
@@ -103,10 +134,18 @@ def build(scene: Scene, where: str) -> Job:
     bins = spectral_bins(scene)
     with _blame(where, "light"):
         source = _sun(scene.light, bins)
-    sheets = []
+    sheets: list[DropSheet | CrystalSheet] = []
     for number, particles in enumerate(scene.air, start=1):
         with _blame(where, f"air.{number}"):
-            sheets.append(_drops(particles, scene.medium.kind, bins, f"{number}"))
+            index = _index(particles, scene.medium.kind)
+            index(bins.edges)  # asks for the whole range now, not in the middle of a job
+            name = particles.name or f"{particles.kind} {number}"
+            if isinstance(particles, Drops):
+                sheets.append(DropSheet(name, index, particles.radius, particles.orders, _amount(particles)))
+            else:
+                shape = hexagonal_prism(particles.aspect)
+                orientation = Orientation(particles.orientation, particles.tilt)
+                sheets.append(CrystalSheet(name, index, shape, orientation, particles.diameter, _amount(particles)))
     with _blame(where, "camera"):
         directions = _directions(scene, source)
     return Job(bins, (source,), tuple(sheets), directions, Background(scene.picture.background, scene.picture.ground))
@@ -137,19 +176,20 @@ def _sun(light: Light, bins: Bins) -> Source:
     return sun(light.elevation, light.azimuth, bins, air, disc=light.disc == "sun")
 
 
-def _drops(drops: Drops, medium: str, bins: Bins, fallback: str) -> DropSheet:
-    if drops.index is not None:
-        index = material.constant(drops.index)
-    elif drops.index_table is not None:
-        index = material.tabulated(drops.index_table, medium)
-    else:
-        index = material.water(drops.temperature, medium)
-    index(bins.edges)  # asks for the whole range now, not in the middle of a job
-    if drops.place == "curtain":
-        amount = partial(curtain, optical_depth=drops.optical_depth, below_horizon=drops.below_horizon)
-    else:
-        amount = partial(layer, optical_depth=drops.optical_depth)
-    return DropSheet(drops.name or f"drops {fallback}", index, drops.radius, drops.orders, amount)
+def _index(particles: Drops | Crystals, medium: str) -> material.RefractiveIndex:
+    if particles.index is not None:
+        return material.constant(particles.index)
+    if particles.index_table is not None:
+        return material.tabulated(particles.index_table, medium)
+    if isinstance(particles, Drops):
+        return material.water(particles.temperature, medium)
+    return material.ice(medium)
+
+
+def _amount(particles: Drops | Crystals) -> Callable[[FloatArray], FloatArray]:
+    if particles.place == "curtain":
+        return partial(curtain, optical_depth=particles.optical_depth, below_horizon=particles.below_horizon)
+    return partial(layer, optical_depth=particles.optical_depth)
 
 
 def _directions(scene: Scene, source: Source) -> Directions:

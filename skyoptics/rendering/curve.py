@@ -80,14 +80,14 @@ def drop(asked: DropCurve, progress: Progress = silent) -> Curve:
     DomainError
         If the physics refuses a value.
     """
-    from skyoptics.droplets import geometric
+    from skyoptics.droplets import angles, geometric
 
     bins = Bins.lines(np.array(asked.wavelength_nm) * NM)
     if asked.index is not None:
         law = material.constant(asked.index)
     else:
         law = material.water(asked.temperature_c + CELSIUS_ZERO, asked.medium)
-    edges = geometric.uniform_edges(asked.step_deg * DEG)
+    edges = angles.uniform_edges(asked.step_deg * DEG)
     with ThreadPoolExecutor(asked.threads or usable_cores()) as executor:
         try:
             whole = geometric.scattering_table(

@@ -56,14 +56,14 @@ class Traced:
 
 def drop_key(sheet: DropSheet, job: Job, quality: str, seed: int) -> str:
     """Return the trace key of a sheet's ray table: all that the table depends on."""
-    from skyoptics.droplets import geometric
+    from skyoptics.droplets import angles
 
     return store.trace_key(
         kind="drops by rays",
         index=sheet.index.key,
         radius=sheet.radius,
         bins=job.bins.edges,
-        edges=geometric.default_edges(sheet.index, job.bins),
+        edges=angles.default_edges(sheet.index, job.bins),
         seed=seed,
         target=QUALITY[quality],
         kernels=KERNEL_HASH,

@@ -15,7 +15,7 @@ from pydantic_core import CoreSchema, core_schema
 
 from skyoptics.scene.fields import listing, note, number, text
 from skyoptics.scene.table import Conflict, Table, distinct
-from skyoptics.units import CELSIUS_ZERO, UM
+from skyoptics.units import CELSIUS_ZERO, DEG, UM
 
 ORDERS = tuple(range(11))
 
@@ -86,10 +86,68 @@ class Drops(Particles):
     @classmethod
     def conflicts(cls, values: Mapping[str, Any]) -> Iterator[Conflict]:
         """Yield conflicts between index and index_table, and between below_horizon and place."""
-        if values.get("index") is not None and values.get("index_table") is not None:
-            yield "index_table", "cannot stand beside index; keep one of the two"
-        if values.get("below_horizon") is True and values.get("place") == "layer":
-            yield "below_horizon", 'a layer ends at the horizon; leave this out or set place = "curtain"'
+        yield from _shared_conflicts(values)
+
+
+class Crystals(Particles):
+    """Hexagonal ice prisms, all of one shape."""
+
+    NAME: ClassVar[str] = "crystals"
+
+    kind: Annotated[Literal["crystals"], note("Kind of particle")]
+    aspect: Annotated[
+        float, number(0.01, 100, "", "Length along the c-axis divided by the diameter across corners; below 1 a plate")
+    ] = 1.0
+    diameter_um: Annotated[
+        float, number(10, 10000, "µm", "Diameter across corners; matters for absorption alone")
+    ] = 100.0
+    orientation: Annotated[
+        Literal["random", "plate", "column", "parry"],
+        note(
+            "How they stand: any way, c-axis near the vertical (plate), c-axis near the horizontal with free spin "
+            "(column), the same with two opposite side faces near the horizontal (parry)"
+        ),
+    ] = "random"
+    tilt_deg: Annotated[
+        float,
+        number(0, 90, "degrees", "Standard deviation of each of the two components of tilt; not for random orientation"),
+    ] = 1.0
+    index: Annotated[
+        float | None, number(1.0001, 2, "", "Refractive index, one for all wavelengths, instead of that of ice")
+    ] = None
+    index_table: Annotated[
+        str | None,
+        text(1000, "CSV file of refractive index by wavelength, its path counted from the scene file; excludes index"),
+        AfterValidator(_beside_scene),
+    ] = None
+    place: Annotated[
+        Literal["curtain", "layer"],
+        note("A curtain has the same optical depth in every direction of view, a layer is a level sheet overhead"),
+    ] = "layer"
+    below_horizon: Annotated[bool, note("Whether a curtain goes on below the horizon")] = False
+
+    @property
+    def diameter(self) -> float:
+        """Diameter across corners [m]."""
+        return self.diameter_um * UM
+
+    @property
+    def tilt(self) -> float:
+        """Tilt spread [rad]."""
+        return self.tilt_deg * DEG
+
+    @classmethod
+    def conflicts(cls, values: Mapping[str, Any]) -> Iterator[Conflict]:
+        """Yield conflicts between index and index_table, and between below_horizon and place."""
+        yield from _shared_conflicts(values)
+
+
+def _shared_conflicts(values: Mapping[str, Any]) -> Iterator[Conflict]:
+    """Yield what goes wrong between the keys that drops and crystals share."""
+    if values.get("index") is not None and values.get("index_table") is not None:
+        yield "index_table", "cannot stand beside index; keep one of the two"
+    if values.get("below_horizon") is True and values.get("place") == "layer":
+        yield "below_horizon", 'a layer ends at the horizon; leave this out or set place = "curtain"'
 
 
 class _ByKind:
@@ -109,7 +167,7 @@ def _kind(value: Any) -> str | None:
     return kind if isinstance(kind, str) else None
 
 
-_BY_KIND = _ByKind(Drops)
-AnyParticles = Annotated[Drops, _BY_KIND]
+_BY_KIND = _ByKind(Drops, Crystals)
+AnyParticles = Annotated[Drops | Crystals, _BY_KIND]
 KINDS: Mapping[str, type[Particles]] = _BY_KIND.kinds
 """Model by value of `kind`, for every kind of particle there is."""

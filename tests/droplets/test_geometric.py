@@ -8,7 +8,7 @@ from concurrent.futures import ThreadPoolExecutor
 import numpy as np
 import pytest
 
-from skyoptics.droplets import geometric
+from skyoptics.droplets import angles, geometric
 from skyoptics.errors import DomainError
 from skyoptics.kernels import sphere
 from skyoptics.optics import bows
@@ -90,7 +90,7 @@ def test_dark_side_is_dark(five, p):
     ],
 )
 def test_table_of_orders_with_even_bins(index, expected):
-    table = one(index, edges=geometric.uniform_edges(0.01 * DEG), relative_error=1.0)
+    table = one(index, edges=angles.uniform_edges(0.01 * DEG), relative_error=1.0)
     for p, angle in expected.items():
         low, high = caustic_bin(table, str(p), 0, angle)
         # 0.005° of the printed digits, and at most the next bin but one holds more light than the caustic's own
@@ -110,7 +110,7 @@ def test_polarisation_just_inside_the_caustic(plain, p, expected):
 @pytest.mark.parametrize("index", [4.0 / 3.0, 1.343 + 1e-6j, 1.5 + 1e-4j])
 def test_energy_and_normalisation(index):
     table = geometric.scattering_table(
-        constant(index), 5e-4, Bins.lines([450e-9, 650e-9]), edges=geometric.uniform_edges(DEG), relative_error=1.0
+        constant(index), 5e-4, Bins.lines([450e-9, 650e-9]), edges=angles.uniform_edges(DEG), relative_error=1.0
     )
     report = table.report
     whole = np.sum(list(report["energy"].values()), axis=0) + report["absorbed"] + report["cut_off"]
@@ -180,13 +180,13 @@ def honesty(seeds, edges):
 
 
 def test_stated_errors_are_honest():
-    ratio, bins = honesty(6, geometric.uniform_edges(0.5 * DEG))
+    ratio, bins = honesty(6, angles.uniform_edges(0.5 * DEG))
     assert bins > 500
     assert ratio == pytest.approx(1.0, abs=0.15)
 
 
 @pytest.mark.slow
-@pytest.mark.parametrize("edges", [None, geometric.uniform_edges(0.5 * DEG)])
+@pytest.mark.parametrize("edges", [None, angles.uniform_edges(0.5 * DEG)])
 def test_stated_errors_are_honest_over_thirty_seeds(edges):
     ratio, bins = honesty(30, edges)
     assert bins > 500
@@ -217,7 +217,7 @@ def test_rays_are_the_mean_of_waves():
         [np.abs(s1) ** 2 + np.abs(s2) ** 2, np.abs(s2) ** 2 - np.abs(s1) ** 2, 2.0 * (s1 * s2.conj()).real]
     )
     waves = waves.reshape(3, 6, -1).mean(axis=2) / (2.0 * np.pi * size**2)
-    table = one(1.333, edges=geometric.uniform_edges(DEG))
+    table = one(1.333, edges=angles.uniform_edges(DEG))
     rays = table.elements.sum(axis=0)[60:120, 0, :] * table.albedo[0] / (4.0 * np.pi)
     rays = rays[:, [0, 1, 3]].reshape(6, 10, 3).mean(axis=1).T
     np.testing.assert_allclose(waves[0] / rays[0], 1.0, atol=0.12)
@@ -229,7 +229,7 @@ def test_rays_are_the_mean_of_waves():
 def test_absorption_grows_with_the_drop():
     small, large = (
         geometric.scattering_table(
-            constant(1.33 + 1e-5j), radius, Bins.lines(600e-9), edges=geometric.uniform_edges(DEG), relative_error=1.0
+            constant(1.33 + 1e-5j), radius, Bins.lines(600e-9), edges=angles.uniform_edges(DEG), relative_error=1.0
         )
         for radius in (1e-5, 1e-3)
     )
@@ -244,7 +244,7 @@ def test_absorption_grows_with_the_drop():
 
 def test_default_edges():
     bins = Bins.adjoining(np.linspace(380.0, 780.0, 41) * 1e-9)
-    edges = geometric.default_edges(water, bins) / DEG
+    edges = angles.default_edges(water, bins) / DEG
     assert edges[0] == 0.0
     assert edges[-1] == pytest.approx(180.0)
     assert 1000 < len(edges) < 3000
@@ -262,7 +262,7 @@ def test_default_edges():
 
 
 def test_uniform_edges():
-    edges = geometric.uniform_edges(0.01 * DEG)
+    edges = angles.uniform_edges(0.01 * DEG)
     assert len(edges) == 18001
     np.testing.assert_allclose(np.diff(edges), 0.01 * DEG, rtol=1e-9)
 
@@ -270,7 +270,7 @@ def test_uniform_edges():
 def test_wide_bins_get_more_nodes():
     # one bin over the whole visible range: the index between nodes must stay within 1e-7
     table = geometric.scattering_table(
-        water, 5e-4, Bins.adjoining([380e-9, 780e-9]), edges=geometric.uniform_edges(DEG), relative_error=1.0
+        water, 5e-4, Bins.adjoining([380e-9, 780e-9]), edges=angles.uniform_edges(DEG), relative_error=1.0
     )
     assert 0.0 < table.report["index_error"] <= 1e-7
 
@@ -301,4 +301,4 @@ def test_faults_are_told(change, words):
 def test_a_step_out_of_range_is_refused():
     for step in (0.0, -1.0, np.nan, 4.0):
         with pytest.raises(DomainError, match="degrees wide"):
-            geometric.uniform_edges(step)
+            angles.uniform_edges(step)

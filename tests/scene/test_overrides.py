@@ -64,7 +64,7 @@ def test_an_override_can_mend_the_file(shortest):
             "light.elevation_deg=nan",
             "--set light.elevation_deg: must be a finite number between -1 and 90 degrees, got nan",
         ),
-        ("air.1.kind=drop", '--set air.1.kind: must be "drops", got "drop"; did you mean drops?'),
+        ("air.1.kind=drop", '--set air.1.kind: must be "drops" or "crystals", got "drop"; did you mean drops?'),
         ("air.2.radius_um=3", "--set air.2.radius_um: air is a list without entry 2; it has 1 entry, counted from 1"),
         ("air.0.radius_um=3", "--set air.0.radius_um: air is a list without entry 0; it has 1 entry, counted from 1"),
         (
@@ -134,7 +134,7 @@ def test_faults_of_file_and_overrides_come_together(shortest):
 def test_no_particles_to_change():
     found = faults("[light]\nelevation_deg = 2\n", "air.1.radius_um=3")
     assert found == [
-        's.toml: air: is missing; a scene needs at least one [[air]] table with kind = "drops"',
+        's.toml: air: is missing; a scene needs at least one [[air]] table with kind = "drops" or "crystals"',
         "--set air.1.radius_um: there is no [[air]] table to change; write one in the scene file",
     ]
 

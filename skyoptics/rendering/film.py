@@ -1,0 +1,191 @@
+"""Planes of traced light: the running sum of batches on the picture's grid, with its error, stored and taken up again.
+
+A batch is (spectral bin, k); k runs outside, bins inside. Its plane depends on the trace key, the bin and k alone. Planes
+are added in that order, so the sum has the same bits for any number of workers and for a run that was stopped and resumed;
+counts are kept by bin, so a stop loses the batches in flight and no more.
+
+The error needs no plane of its own for each bin: batches of different bins are independent, so the variance of luminance is
+the sum of the bins' variances. Luminance here has the weights of the eye under the sun above the air (`reference`), which
+do not change with what changes a picture without tracing again; relative errors carry over to the displayed luminance.
+"""
+
+from __future__ import annotations
+
+import json
+import sys
+from collections.abc import Iterator
+from contextlib import suppress
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+from uuid import uuid4
+
+import numpy as np
+
+from skyoptics.rendering.store import folder as store_folder
+from skyoptics.units import Float32Array, FloatArray
+
+FORMAT = 1
+MOST_STORED = 8e9
+"""Films are kept up to this size together [byte]; the ones not used for longest go first."""
+
+
+@dataclass(eq=False)
+class Film:
+    """What has been traced of one sheet.
+
+    Parameters
+    ----------
+    key : str
+        Trace key.
+    rays : ndarray, shape (nλ,)
+        Rays of a batch of each bin.
+    reference : ndarray, shape (nλ,)
+        Weights of the luminance whose error is kept.
+    sums : ndarray, shape (nλ, ny, nx)
+        Power of all batches.
+    squares : ndarray, shape (ny, nx)
+        Σ over batches of (reference · power ÷ 2 rays)².
+    counts : ndarray, shape (nλ,)
+        Batches in the sums.
+    tally : dict
+        Sums of what became of the rays.
+    reused : int
+        Batches that were found in the store.
+    """
+
+    key: str
+    rays: Any
+    reference: FloatArray
+    sums: Float32Array
+    squares: Float32Array
+    counts: Any
+    tally: dict[str, float] = field(default_factory=dict)
+    reused: int = 0
+
+    @classmethod
+    def blank(cls, key: str, rays: Any, reference: FloatArray, shape: tuple[int, int]) -> Film:
+        """Return a film without light."""
+        bands = len(rays)
+        return cls(
+            key,
+            np.asarray(rays),
+            reference,
+            np.zeros((bands, *shape), dtype=np.float32),
+            np.zeros(shape, dtype=np.float32),
+            np.zeros(bands, dtype=np.int64),
+        )
+
+    def add(self, band: int, plane: Float32Array, tally: dict[str, float]) -> None:
+        """Add the next batch of a bin; the plane is used up."""
+        self.sums[band] += plane
+        plane *= np.float32(self.reference[band] / (2.0 * self.rays[band]))
+        plane *= plane
+        self.squares += plane
+        self.counts[band] += 1
+        for name, value in tally.items():
+            self.tally[name] = self.tally.get(name, 0.0) + value
+
+    def missing(self, rounds: int) -> Iterator[tuple[int, int]]:
+        """Yield (bin, k) of the batches that are missing up to a number of rounds, in the order they are added."""
+        for k in range(int(self.counts.min()), rounds):
+            for band in range(len(self.counts)):
+                if self.counts[band] <= k:
+                    yield band, k
+
+    @property
+    def rounds(self) -> int:
+        """Whole rounds in the sums."""
+        return int(self.counts.min())
+
+    @property
+    def traced_rays(self) -> int:
+        """Rays in the sums."""
+        return int((self.counts * self.rays).sum())
+
+    def scale(self) -> FloatArray:
+        """Return what turns sums into phase · solid angle, shape (nλ,)."""
+        return 1.0 / (2.0 * self.rays * np.maximum(self.counts, 1))
+
+    def variance(self) -> FloatArray:
+        """Return the variance of the mean of reference luminance · solid angle, shape (ny, nx)."""
+        count = float(self.counts.mean())
+        if self.rounds < 2:
+            return np.full(self.squares.shape, np.inf)
+        mean_square = np.zeros(self.squares.shape)
+        for band, scale in enumerate(self.scale()):
+            mean_square += (self.reference[band] * scale * self.sums[band].astype(np.float64)) ** 2
+        spread = self.squares.astype(np.float64) - mean_square * count
+        return np.maximum(spread, 0.0) / (count * (count - 1.0))
+
+
+def films_folder() -> Path:
+    """Return where films are kept."""
+    return store_folder().with_name("films")
+
+
+def find(blank: Film) -> Film:
+    """Return the stored film of the same trace key, or the blank one.
+
+    A file that is broken or belongs to another job is set aside, in words.
+    """
+    path = films_folder() / f"{blank.key}.npz"
+    if not path.exists():
+        return blank
+    try:
+        with np.load(path, allow_pickle=False) as stored:
+            about = json.loads(str(stored["about"]))
+            if about["key"] != blank.key or about["format"] != FORMAT:
+                raise ValueError("it belongs to another job")
+            sums, squares, counts = stored["sums"], stored["squares"], stored["counts"]
+        if sums.shape != blank.sums.shape or counts.shape != blank.counts.shape:
+            raise ValueError("it has another size")
+    except Exception as error:  # whatever is in the file: it is only a copy
+        sys.stderr.write(f"set aside stored batches that cannot be used ({error}); tracing starts anew\n")
+        path.replace(path.with_suffix(".broken"))
+        return blank
+    with suppress(OSError):
+        path.touch()
+    return Film(
+        blank.key, blank.rays, blank.reference, sums, squares, counts, dict(about["tally"]), reused=int(counts.sum())
+    )
+
+
+def keep(film: Film) -> bool:
+    """Store a film, unless a longer one of the same key is there; return whether it is kept."""
+    path = films_folder() / f"{film.key}.npz"
+    aside = path.with_name(f"{path.name}.{uuid4().hex}.part")
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        if path.exists() and _stored_batches(path, film.key) > film.counts.sum():
+            return True
+        about = {"key": film.key, "format": FORMAT, "tally": film.tally, "batches": int(film.counts.sum())}
+        with aside.open("wb") as file:
+            np.savez(file, about=np.array(json.dumps(about)), sums=film.sums, squares=film.squares, counts=film.counts)
+        aside.replace(path)
+        _make_room(path)
+    except OSError:
+        return False
+    finally:
+        with suppress(OSError):
+            aside.unlink()
+    return True
+
+
+def _stored_batches(path: Path, key: str) -> int:
+    try:
+        with np.load(path, allow_pickle=False) as stored:
+            about = json.loads(str(stored["about"]))
+        return int(about["batches"]) if about["key"] == key else 0
+    except Exception:
+        return 0
+
+
+def _make_room(newest: Path) -> None:
+    """Remove films not used for longest while all together are too large."""
+    files = sorted(newest.parent.glob("*.npz"), key=lambda path: path.stat().st_mtime, reverse=True)
+    total = 0
+    for path in files:
+        total += path.stat().st_size
+        if total > MOST_STORED and path != newest:
+            path.unlink(missing_ok=True)
