@@ -10,7 +10,7 @@ import click
 from skyoptics.cli.options import NumberList, Word, json_option, sampling_options
 from skyoptics.errors import nearest
 
-KINDS = ("drop",)
+KINDS = ("drop", "crystal")
 
 
 class Kinds(click.Group):
@@ -30,48 +30,88 @@ def command() -> None:
     """Scattering curve of one kind of particle: intensity and polarisation by scattering angle."""
 
 
-@command.command("drop")
-@click.option("--radius-um", type=click.FloatRange(1, 10000), default=500.0, show_default=True, help="Radius [µm].")
-@click.option("--method", type=Word(["rays"]), default="rays", show_default=True, help="Ray optics.")
-@click.option(
+WAVELENGTHS = click.option(
     "--wavelength-nm",
     type=NumberList(float, 200, 1100),
     default="450,550,650",
     show_default=True,
     help="Wavelengths in vacuum [nm].",
 )
-@click.option(
-    "--temperature-c", type=click.FloatRange(-12, 99), default=20.0, show_default=True, help="Of the water [°C]."
+STEP = click.option(
+    "--step-deg", type=click.FloatRange(0.001, 10), default=0.1, show_default=True, help="Width of angle bins [°]."
 )
-@click.option("--index", type=click.FloatRange(1.0001, 3), help="Constant refractive index instead of that of water.")
-@click.option(
+MEDIUM = click.option(
     "--medium",
     type=Word(["air", "vacuum"]),
     default="air",
     show_default=True,
-    help="What water's index is relative to.",
+    help="What the index of water or ice is relative to.",
 )
+DISC = click.option("--disc", is_flag=True, help="Average over the sun's disc.")
+CSV = click.option("--csv", type=click.Path(path_type=Path, allow_dash=True), help="File for the curve; - for stdout.")
+
+
+@command.command("drop")
+@click.option("--radius-um", type=click.FloatRange(1, 10000), default=500.0, show_default=True, help="Radius [µm].")
+@click.option("--method", type=Word(["rays"]), default="rays", show_default=True, help="Ray optics.")
+@WAVELENGTHS
+@click.option(
+    "--temperature-c", type=click.FloatRange(-12, 99), default=20.0, show_default=True, help="Of the water [°C]."
+)
+@click.option("--index", type=click.FloatRange(1.0001, 3), help="Constant refractive index instead of that of water.")
+@MEDIUM
 @click.option(
     "--orders",
     type=NumberList(int, 0, 10),
     help="Orders p to keep: 0 external reflection, 2 primary bow, …; default all.",
 )
-@click.option(
-    "--step-deg", type=click.FloatRange(0.001, 10), default=0.1, show_default=True, help="Width of angle bins [°]."
-)
-@click.option("--disc", is_flag=True, help="Average over the sun's disc.")
-@click.option("--csv", type=click.Path(path_type=Path, allow_dash=True), help="File for the curve; - for stdout.")
+@STEP
+@DISC
+@CSV
 @json_option
 @sampling_options
-def drop(**options: Any) -> None:
+def drop(csv: Path | None, as_json: bool, **options: Any) -> None:
     """Scattering curve of a water drop.
 
     Example: skyoptics phase drop --wavelength-nm 450,550,650 --orders 2,3 --step-deg 0.01 --csv bow.csv
     """
-    from skyoptics.cli import progress
     from skyoptics.rendering import curve
+
+    _put_out(curve.drop, curve.DropCurve(**options), csv, as_json)
+
+
+@command.command("crystal")
+@click.option(
+    "--aspect",
+    type=click.FloatRange(0.01, 100),
+    default=1.0,
+    show_default=True,
+    help="Length along the c-axis ÷ diameter across corners.",
+)
+@WAVELENGTHS
+@click.option("--index", type=click.FloatRange(1.0001, 2), help="Constant refractive index instead of that of ice.")
+@MEDIUM
+@STEP
+@DISC
+@CSV
+@json_option
+@sampling_options
+def crystal(csv: Path | None, as_json: bool, **options: Any) -> None:
+    """Scattering curve of hexagonal ice prisms in random orientation.
+
+    Example: skyoptics phase crystal --aspect 1.0 --wavelength-nm 550 --step-deg 0.05 --csv halo.csv
+    """
+    from skyoptics.rendering import curve
+
+    _put_out(curve.crystal, curve.CrystalCurve(**options), csv, as_json)
+
+
+def _put_out(work: Any, asked: Any, csv: Path | None, as_json: bool) -> None:
+    """Work out a curve under a progress bar and write it."""
+    from skyoptics.cli import progress
+    from skyoptics.rendering.curve import put_out
 
     progress.note_first_compilation()
     with progress.shown() as tell:
-        found = curve.drop(curve.DropCurve(**{name: options[name] for name in curve.DropCurve.__annotations__}), tell)
-    curve.put_out(found, options["csv"], options["as_json"], click.echo)
+        found = work(asked, tell)
+    put_out(found, csv, as_json, click.echo)

@@ -20,6 +20,11 @@ from skyoptics.cli.options import SceneFile, Word, json_option, sampling_options
 @click.option("--data", is_flag=True, help="Write the spectral radiance too, as NetCDF.")
 @click.option("--image", "extra", multiple=True, type=Word(["exr", "tiff"]), help="Write a linear float image too.")
 @click.option("--dry-run", is_flag=True, help="Say what it would take: rays, memory, time, files.")
+@click.option("--rays", type=click.IntRange(1), help="Rays of each kind of particle; overrides --quality.")
+@click.option(
+    "--processes", type=click.IntRange(1, 1024), default=1, show_default=True, help="Worker processes that trace."
+)
+@click.option("--noise-map", is_flag=True, help="Write a map of the error of displayed lightness too.")
 @json_option
 @sampling_options
 def command(
@@ -29,6 +34,9 @@ def command(
     data: bool,
     extra: tuple[str, ...],
     dry_run: bool,
+    rays: int | None,
+    processes: int,
+    noise_map: bool,
     as_json: bool,
     quality: str,
     seed: int,
@@ -48,16 +56,17 @@ def command(
     from skyoptics.rendering import output
     from skyoptics.rendering.run import Settings, render, usable_cores
 
-    settings = Settings(quality, seed, threads or usable_cores())
+    settings = Settings(quality, seed, threads or usable_cores(), processes, rays)
+    wanted = output.Wanted(folder, name, data, extra, noise_map)
     if dry_run:
-        _estimate(described, scene, settings, output.planned(folder, name, data, extra), data, as_json)
+        _estimate(described, scene, settings, wanted, as_json)
         return
     output.prepare(folder)
     progress.note_first_compilation()
+    words = _command(scene, overrides, wanted, settings)
     with progress.shown() as tell:
-        result = render(described, str(scene), settings, tell, data)
-    words = _command(scene, overrides, data, extra, quality, seed)
-    files = output.write(result, described, folder, name, words, data, extra)
+        result = render(described, str(scene), settings, tell, data, wanted.preview)
+    files = output.write(result, described, wanted, words)
     for caution in result.report["cautions"]:
         click.echo(f"caution: {caution}", err=True)
     last = f"{files[0]}: {result.report['look_for']}"
@@ -68,21 +77,22 @@ def command(
         click.echo(last)
 
 
-def _command(
-    scene: Path, overrides: tuple[str, ...], data: bool, extra: tuple[str, ...], quality: str, seed: int
-) -> list[str]:
+def _command(scene: Path, overrides: tuple[str, ...], wanted: Any, settings: Any) -> list[str]:
     """Return the words that make the picture again, run beside the scene file."""
-    words = ["skyoptics", "render", scene.name, "--seed", str(seed), "--quality", quality]
+    words = ["skyoptics", "render", scene.name, "--seed", str(settings.seed), "--quality", settings.quality]
+    if settings.rays is not None:
+        words += ["--rays", str(settings.rays)]
     for override in overrides:
         words += ["--set", override]
-    return words + (["--data"] if data else []) + [word for name in extra for word in ("--image", name)]
+    words += ["--data"] if wanted.data else []
+    return words + [word for name in wanted.extra for word in ("--image", name)]
 
 
-def _estimate(scene: Any, path: Path, settings: Any, files: list[Path], data: bool, as_json: bool) -> None:
+def _estimate(scene: Any, path: Path, settings: Any, files: Any, as_json: bool) -> None:
     """Print what a render would take."""
     from skyoptics.rendering.estimate import estimate
 
-    wanted = estimate(scene, str(path), settings, data) | {"files": [str(file) for file in files]}
+    wanted = estimate(scene, str(path), settings, files.data) | {"files": [str(file) for file in files.paths()]}
     if as_json:
         click.echo(json.dumps(wanted))
         return

@@ -6,7 +6,7 @@ import numpy as np
 
 from skyoptics.geometry.axes import angle_between, azimuth_elevation
 from skyoptics.optics import bows
-from skyoptics.rendering.build import Job
+from skyoptics.rendering.build import DropSheet, Job
 from skyoptics.units import DEG
 
 _NAMES = {2: "primary", 3: "secondary"}
@@ -32,7 +32,7 @@ def what_to_look_for(job: Job) -> str:
     azimuth, elevation = azimuth_elevation(-job.sources[0].direction)
     middle = job.bins.edges[np.argmin(np.abs(job.bins.centre - 600e-9))].mean()
     found = []
-    for sheet in job.sheets:
+    for sheet in (sheet for sheet in job.sheets if isinstance(sheet, DropSheet)):
         for order in (p for p in sheet.orders if p in _NAMES):
             angle = np.pi - float(bows.scattering_angle(sheet.index(middle).real, order))
             top = float(elevation) + angle
@@ -48,7 +48,7 @@ def cautions(job: Job) -> list[str]:
     result = []
     if _sun_near_frame(job):
         result.append(SUN_CAUTION)
-    if job.sheets:
+    if any(isinstance(sheet, DropSheet) for sheet in job.sheets):
         result.append(SHOWER_CAUTION)
     return result
 

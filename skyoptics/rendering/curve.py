@@ -10,6 +10,7 @@ from __future__ import annotations
 import json
 from collections.abc import Callable, Iterator
 from concurrent.futures import ThreadPoolExecutor
+from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -39,6 +40,21 @@ class DropCurve:
     index: float | None = None
     medium: str = "air"
     orders: tuple[int, ...] | None = None
+    step_deg: float = 0.1
+    disc: bool = False
+    quality: str = "normal"
+    seed: int = 1
+    threads: int | None = None
+
+
+@dataclass(frozen=True)
+class CrystalCurve:
+    """What is asked of the curve of randomly oriented crystals; human units, as the command line gives them."""
+
+    aspect: float = 1.0
+    wavelength_nm: tuple[float, ...] = (450.0, 550.0, 650.0)
+    index: float | None = None
+    medium: str = "air"
     step_deg: float = 0.1
     disc: bool = False
     quality: str = "normal"
@@ -88,41 +104,94 @@ def drop(asked: DropCurve, progress: Progress = silent) -> Curve:
     else:
         law = material.water(asked.temperature_c + CELSIUS_ZERO, asked.medium)
     edges = angles.uniform_edges(asked.step_deg * DEG)
-    with ThreadPoolExecutor(asked.threads or usable_cores()) as executor:
+    with _threads(asked.threads) as executor:
+        whole = geometric.scattering_table(
+            law,
+            asked.radius_um * UM,
+            bins,
+            edges=edges,
+            seed=asked.seed,
+            relative_error=QUALITY[asked.quality],
+            executor=executor,
+            progress=lambda done, total: progress("tracing", done, total),
+        )
+    orders = tuple(range(11)) if asked.orders is None else asked.orders
+    table = whole.select([str(order) for order in orders]).total()
+    report = {"method": asked.method, "particle": "drop", "radius_um": asked.radius_um, "orders": list(orders)}
+    report["energy_by_order"] = whole.report["energy"]
+    return _curve(table, whole, law, bins, asked, report)
+
+
+def crystal(asked: CrystalCurve, progress: Progress = silent) -> Curve:
+    """Return the curve of randomly oriented hexagonal prisms by ray optics.
+
+    Parameters
+    ----------
+    asked : CrystalCurve
+        What is wanted.
+    progress : callable
+        Told about batches.
+
+    Raises
+    ------
+    DomainError
+        If the physics refuses a value.
+    """
+    from skyoptics.crystals import table as tables
+    from skyoptics.crystals.shapes import hexagonal_prism
+
+    bins = Bins.lines(np.array(asked.wavelength_nm) * NM)
+    law = material.constant(asked.index) if asked.index is not None else material.ice(asked.medium)
+    with _threads(asked.threads) as executor:
+        whole = tables.scattering_table(
+            hexagonal_prism(asked.aspect),
+            law,
+            bins,
+            count=max(2, round(180.0 / asked.step_deg)),
+            seed=asked.seed,
+            relative_error=QUALITY[asked.quality],
+            executor=executor,
+            progress=lambda done, total: progress("tracing", done, total),
+        )
+    report: dict[str, Any] = {"method": "rays", "particle": "crystal", "shape": "prism", "aspect": asked.aspect}
+    report |= {name: whole.report[name] for name in ("scattered", "straight_on", "below_cutoff", "roulette")}
+    return _curve(whole.total(), whole, law, bins, asked, report)
+
+
+@contextmanager
+def _threads(number: int | None) -> Iterator[ThreadPoolExecutor]:
+    """Give a pool that drops what waits when the work is stopped."""
+    with ThreadPoolExecutor(number or usable_cores()) as executor:
         try:
-            whole = geometric.scattering_table(
-                law,
-                asked.radius_um * UM,
-                bins,
-                edges=edges,
-                seed=asked.seed,
-                relative_error=QUALITY[asked.quality],
-                executor=executor,
-                progress=lambda done, total: progress("tracing", done, total),
-            )
+            yield executor
         except BaseException:
             executor.shutdown(wait=True, cancel_futures=True)
             raise
-    orders = tuple(range(11)) if asked.orders is None else asked.orders
-    table = whole.select([str(order) for order in orders]).total()
+
+
+def _curve(
+    table: ScatteringTable,
+    whole: ScatteringTable,
+    law: material.RefractiveIndex,
+    bins: Bins,
+    asked: DropCurve | CrystalCurve,
+    report: dict[str, Any],
+) -> Curve:
+    """Put a curve under the sun's disc where that is asked for, and finish its report."""
     if asked.disc:
         table = over_disc(table, sun_disc(bins), table.angle)
-    report = {
-        "method": asked.method,
-        "particle": "drop",
-        "radius_um": asked.radius_um,
+    shown = table.elements[0, :, :, 0]
+    report |= {
         "wavelength_nm": list(asked.wavelength_nm),
         "index": law(bins.centre).real.tolist(),
         "medium": asked.medium if asked.index is None else "as given by --index",
-        "orders": list(orders),
         "disc": asked.disc,
         "asymmetry": whole.asymmetry.tolist(),
-        "energy_by_order": whole.report["energy"],
         "absorbed": whole.report["absorbed"],
         "cut_off": whole.report["cut_off"],
         "rays": whole.report["rays"],
         "relative_error": whole.report["relative_error"],
-        "brightest_deg": [float(table.angle[row] / DEG) for row in table.elements[0, :, :, 0].argmax(axis=0)],
+        "brightest_deg": [float(table.angle[row] / DEG) for row in shown.argmax(axis=0)],
         "seed": asked.seed,
     }
     return Curve(table, law(bins.centre).real, report)

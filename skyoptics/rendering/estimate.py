@@ -5,14 +5,17 @@ from __future__ import annotations
 from typing import Any
 
 from skyoptics.rendering import memory
-from skyoptics.rendering.build import build
+from skyoptics.rendering.build import CrystalSheet, build
+from skyoptics.rendering.expose import LEAST_ROUNDS, begin
 from skyoptics.rendering.run import Settings
-from skyoptics.rendering.scatter import drop_key, least_rays
+from skyoptics.rendering.scatter import is_table, least_rays, table_key
 from skyoptics.rendering.store import find
 from skyoptics.scene.model import Scene
 
-RAYS_PER_SECOND = 2.5e6
-"""Rays through a sphere, eleven orders each, one thread (measured, 2-core machine of 2026)."""
+TABLE_RAYS_PER_SECOND = 5e6
+"""Rays through a sphere, eleven orders each, one thread (measured on a 2-core machine of 2026)."""
+FILM_RAYS_PER_SECOND = 5e6
+"""Rays through crystals onto a picture, one thread (same machine)."""
 VALUES_PER_SECOND = 1.2e7
 """Pixels times wavelengths looked up, one thread (same machine)."""
 PIXELS_PER_SECOND = 1.0e6
@@ -40,15 +43,22 @@ def estimate(scene: Scene, where: str, settings: Settings, data: bool) -> dict[s
         `seconds`.
     """
     job = build(scene, where)
-    stored = sum(find(drop_key(sheet, job, settings.quality, settings.seed)) is not None for sheet in job.sheets)
-    rays = (len(job.sheets) - stored) * least_rays(job.bins)
+    tables = [sheet for sheet in job.sheets if is_table(sheet)]
+    stored = [find(table_key(sheet, job, settings.sampling)) is not None for sheet in tables]
+    rays = sum(least_rays(sheet, job.bins) for sheet, found in zip(tables, stored, strict=True) if not found)
     pixels = job.directions.shape[0] * job.directions.shape[1]
+    films = 0
+    for sheet in job.sheets:
+        if isinstance(sheet, CrystalSheet) and not is_table(sheet):
+            film = begin(sheet, job, settings.seed).film
+            wanted = settings.rays or LEAST_ROUNDS * int(film.rays.sum())
+            films += max(0, wanted - film.traced_rays)
     values = pixels * len(job.bins) * max(len(job.sheets), 1) * (2 if data else 1)
-    seconds = rays / RAYS_PER_SECOND + values / VALUES_PER_SECOND
+    seconds = rays / TABLE_RAYS_PER_SECOND + films / FILM_RAYS_PER_SECOND + values / VALUES_PER_SECOND
     return {
-        "rays": rays,
-        "tables": len(job.sheets),
-        "stored_tables": stored,
-        "memory_bytes": memory.predict(job.directions.shape, job.bins, len(job.sheets), settings.threads, data),
+        "rays": rays + films,
+        "tables": len(tables),
+        "stored_tables": sum(stored),
+        "memory_bytes": memory.predict(job, settings.threads, data),
         "seconds": round(seconds / settings.threads + pixels / PIXELS_PER_SECOND + 1.0, 1),
     }

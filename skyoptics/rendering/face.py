@@ -96,9 +96,8 @@ class Picture:
         target = Path(folder)
         output.prepare(target)
         words = ("skyoptics", "render", f"{self.name}.toml", "--seed", str(self.report["seed"]))
-        return output.write(
-            self._result, self._scene, target, self.name, (*words, "--quality", self.report["quality"]), data, ()
-        )[0]
+        wanted = output.Wanted(target, self.name, data)
+        return output.write(self._result, self._scene, wanted, (*words, "--quality", self.report["quality"]))[0]
 
 
 def load(path: str | os.PathLike[str]) -> Scene:
@@ -122,7 +121,9 @@ def load(path: str | os.PathLike[str]) -> Scene:
     return scene_load.load(path)
 
 
-def render(scene: Scene, quality: str = "normal", seed: int = 1, threads: int | None = None) -> Picture:
+def render(
+    scene: Scene, quality: str = "normal", seed: int = 1, threads: int | None = None, rays: int | None = None
+) -> Picture:
     """Render a scene.
 
     Parameters
@@ -135,6 +136,8 @@ def render(scene: Scene, quality: str = "normal", seed: int = 1, threads: int | 
         Of the random numbers.
     threads : int, optional
         Worker threads; default all cores. The picture does not depend on it.
+    rays : int, optional
+        Rays of each kind of particle; overrides the quality.
 
     Returns
     -------
@@ -150,5 +153,5 @@ def render(scene: Scene, quality: str = "normal", seed: int = 1, threads: int | 
     if quality not in QUALITY:
         raise DomainError(f"no quality {quality!r}; there are {', '.join(QUALITY)}{nearest(quality, QUALITY)}")
     name = safe_name(scene.title or "scene")
-    settings = Settings(quality, seed, threads or usable_cores())
+    settings = Settings(quality, seed, threads or usable_cores(), rays=rays)
     return Picture(scene, run(scene, name, settings), name)

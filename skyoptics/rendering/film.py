@@ -13,7 +13,7 @@ from __future__ import annotations
 
 import json
 import sys
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from contextlib import suppress
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -22,6 +22,8 @@ from uuid import uuid4
 
 import numpy as np
 
+from skyoptics.geometry.directions import Directions
+from skyoptics.optics.source import Source
 from skyoptics.rendering.store import folder as store_folder
 from skyoptics.units import Float32Array, FloatArray
 
@@ -62,6 +64,8 @@ class Film:
     counts: Any
     tally: dict[str, float] = field(default_factory=dict)
     reused: int = 0
+    whole: bool = True
+    """False while a batch is half added."""
 
     @classmethod
     def blank(cls, key: str, rays: Any, reference: FloatArray, shape: tuple[int, int]) -> Film:
@@ -78,6 +82,7 @@ class Film:
 
     def add(self, band: int, plane: Float32Array, tally: dict[str, float]) -> None:
         """Add the next batch of a bin; the plane is used up."""
+        self.whole = False
         self.sums[band] += plane
         plane *= np.float32(self.reference[band] / (2.0 * self.rays[band]))
         plane *= plane
@@ -85,6 +90,7 @@ class Film:
         self.counts[band] += 1
         for name, value in tally.items():
             self.tally[name] = self.tally.get(name, 0.0) + value
+        self.whole = True
 
     def missing(self, rounds: int) -> Iterator[tuple[int, int]]:
         """Yield (bin, k) of the batches that are missing up to a number of rounds, in the order they are added."""
@@ -107,6 +113,13 @@ class Film:
         """Return what turns sums into phase · solid angle, shape (nλ,)."""
         return 1.0 / (2.0 * self.rays * np.maximum(self.counts, 1))
 
+    def luminance(self) -> FloatArray:
+        """Return the mean of reference luminance · solid angle, shape (ny, nx)."""
+        total = np.zeros(self.squares.shape)
+        for band, scale in enumerate(self.scale()):
+            total += self.reference[band] * scale * self.sums[band]
+        return total
+
     def variance(self) -> FloatArray:
         """Return the variance of the mean of reference luminance · solid angle, shape (ny, nx)."""
         count = float(self.counts.mean())
@@ -117,6 +130,32 @@ class Film:
             mean_square += (self.reference[band] * scale * self.sums[band].astype(np.float64)) ** 2
         spread = self.squares.astype(np.float64) - mean_square * count
         return np.maximum(spread, 0.0) / (count * (count - 1.0))
+
+
+@dataclass(frozen=True, eq=False)
+class FilmScatterer:
+    """A scatterer that is known on the picture's own grid alone: a film, read."""
+
+    film: Film
+    extinction_towards: Callable[[FloatArray], FloatArray]
+
+    def phase(self, source: Source, directions: Directions, rows: slice = slice(None)) -> FloatArray:
+        """Return differential scattering ÷ reference extinction cross-section, shape (ny, nx, nλ) [sr⁻¹].
+
+        The source and the grid must be those that the film was traced for. Pixels cut by the rim of the image, which have
+        no solid angle, hold no light.
+        """
+        solid = directions.solid_angle(rows)
+        factor = np.divide(1.0, solid, out=np.zeros_like(solid), where=solid > 0.0)
+        light = np.moveaxis(self.film.sums[:, rows], 0, 2).astype(np.float64)
+        light *= self.film.scale()
+        light *= factor[..., None]
+        return light
+
+    def extinction(self, cos_zenith: FloatArray) -> FloatArray:
+        """Return extinction towards directions ÷ reference, shape (…, nλ)."""
+        value = self.extinction_towards(np.asarray(cos_zenith, dtype=np.float64))
+        return np.repeat(value[..., None], len(self.film.rays), axis=-1)
 
 
 def films_folder() -> Path:
@@ -133,7 +172,7 @@ def find(blank: Film) -> Film:
     if not path.exists():
         return blank
     try:
-        with np.load(path, allow_pickle=False) as stored:
+        with path.open("rb") as file, np.load(file, allow_pickle=False) as stored:
             about = json.loads(str(stored["about"]))
             if about["key"] != blank.key or about["format"] != FORMAT:
                 raise ValueError("it belongs to another job")
@@ -153,6 +192,8 @@ def find(blank: Film) -> Film:
 
 def keep(film: Film) -> bool:
     """Store a film, unless a longer one of the same key is there; return whether it is kept."""
+    if not film.whole:
+        return False
     path = films_folder() / f"{film.key}.npz"
     aside = path.with_name(f"{path.name}.{uuid4().hex}.part")
     try:
@@ -174,7 +215,7 @@ def keep(film: Film) -> bool:
 
 def _stored_batches(path: Path, key: str) -> int:
     try:
-        with np.load(path, allow_pickle=False) as stored:
+        with path.open("rb") as file, np.load(file, allow_pickle=False) as stored:
             about = json.loads(str(stored["about"]))
         return int(about["batches"]) if about["key"] == key else 0
     except Exception:

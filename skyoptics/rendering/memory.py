@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from skyoptics.errors import ResourceError
-from skyoptics.optics.bins import Bins
+from skyoptics.rendering.build import Job
+from skyoptics.rendering.scatter import is_table
 
 SHARE = 0.7
 """Share of the free memory that a job may take."""
@@ -15,27 +16,28 @@ _TABLE = 60e6
 """One stored table and its average over the disc [byte], measured with the default bins."""
 
 
-def predict(shape: tuple[int, int], bins: Bins, sheets: int, threads: int, data: bool) -> int:
+def predict(job: Job, threads: int, data: bool) -> int:
     """Return the largest memory that a render will hold [byte].
 
     Parameters
     ----------
-    shape : tuple of int
-        Rows, columns.
-    bins : Bins
-        Wavelength axis.
-    sheets : int
-        Kinds of particle.
+    job : Job
+        Grid, wavelengths, sheets.
     threads : int
-        Blocks in work at once.
+        Blocks and batches in work at once.
     data : bool
         Whether the radiance of the whole picture is kept (float32), with its directions (float64).
     """
-    pixels = shape[0] * shape[1]
+    rows, columns = job.directions.shape
+    pixels, bands = rows * columns, len(job.bins)
+    films = sum(not is_table(sheet) for sheet in job.sheets)
     picture = pixels * (12 + 12 + 8)  # XYZ and linear RGB in float32, encoded lines
-    radiance = pixels * (4 * len(bins) + 2 * 8) * 2 if data else 0  # the writer copies what it compresses
-    blocks = threads * max(BLOCK, shape[1]) * len(bins) * 8 * 7
-    return int(_PROGRAM + sheets * _TABLE + picture + radiance + blocks)
+    radiance = pixels * (4 * bands + 2 * 8) * 2 if data else 0  # the writer copies what it compresses
+    blocks = threads * max(BLOCK, columns) * bands * 8 * 7
+    planes = films * pixels * 4 * (bands + 1)
+    noise = pixels * 8 * 10 if films else 0
+    flying = 3 * threads * pixels * 4 if films else 0
+    return int(_PROGRAM + (len(job.sheets) - films) * _TABLE + picture + radiance + blocks + planes + noise + flying)
 
 
 def check(need: int) -> None:

@@ -4,19 +4,26 @@ from __future__ import annotations
 
 import json
 from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+
 import skyoptics
 from skyoptics.colour import images, metadata
-from skyoptics.colour.display import linear_rgb
+from skyoptics.colour.develop import Developed
+from skyoptics.colour.display import decode, linear_rgb
 from skyoptics.errors import ResourceError
 from skyoptics.rendering import dataset
 from skyoptics.rendering.run import Result
 from skyoptics.scene.model import Scene
+from skyoptics.units import Float32Array
 
 EXTRA = ("exr", "tiff")
 """Linear float images that can be asked for."""
+NOISE_WHITE = 0.05
+"""Error of displayed lightness that a noise map shows as white [1]."""
 
 
 def text_entries(report: Mapping[str, Any], command: Sequence[str]) -> dict[str, str]:
@@ -34,10 +41,47 @@ def text_entries(report: Mapping[str, Any], command: Sequence[str]) -> dict[str,
     return entries
 
 
-def planned(folder: Path, name: str, data: bool, extra: Sequence[str]) -> list[Path]:
-    """Return the files that `write` will make, the picture first."""
-    endings = ["png", "json", *(["nc"] if data else []), *extra]
-    return [folder / f"{name}.{ending}" for ending in endings]
+@dataclass(frozen=True)
+class Wanted:
+    """Which files a render is to leave.
+
+    Parameters
+    ----------
+    folder : Path
+        Where.
+    name : str
+        File name without its ending, safe already.
+    data : bool
+        Whether to write the radiance as NetCDF.
+    extra : sequence of str
+        Of `EXTRA`.
+    noise_map : bool
+        Whether to write a picture of the error of displayed lightness.
+    """
+
+    folder: Path
+    name: str
+    data: bool = False
+    extra: Sequence[str] = ()
+    noise_map: bool = False
+
+    def path(self, ending: str) -> Path:
+        """Return the path of one file."""
+        return self.folder / f"{self.name}.{ending}"
+
+    def paths(self) -> list[Path]:
+        """Return the files that `write` will make, the picture first."""
+        endings = ["png", "json", *(["nc"] if self.data else []), *self.extra]
+        return [self.path(ending) for ending in endings] + ([self.path("noise.png")] if self.noise_map else [])
+
+    @property
+    def preview_path(self) -> Path:
+        """Where the preview is written."""
+        return self.path("preview.png")
+
+    def preview(self, developed: Developed) -> None:
+        """Write a first, noisy picture under a name of its own; `write` removes it."""
+        images.write_png(self.preview_path, developed.rgb, text={"Description": "preview: first round of tracing"})
 
 
 def prepare(folder: Path) -> None:
@@ -60,9 +104,7 @@ def prepare(folder: Path) -> None:
         ) from error
 
 
-def write(
-    result: Result, scene: Scene, folder: Path, name: str, command: Sequence[str], data: bool, extra: Sequence[str]
-) -> list[Path]:
+def write(result: Result, scene: Scene, wanted: Wanted, command: Sequence[str]) -> list[Path]:
     """Write a render's files.
 
     Parameters
@@ -71,16 +113,10 @@ def write(
         From `skyoptics.rendering.run.render`.
     scene : Scene
         For the depth of the PNG.
-    folder : Path
-        Must exist (`prepare`).
-    name : str
-        File name without its ending, safe already.
+    wanted : Wanted
+        Which files; the folder must exist (`prepare`).
     command : sequence of str
         The command's words, kept as metadata.
-    data : bool
-        Whether to write the radiance as NetCDF.
-    extra : sequence of str
-        Of `EXTRA`.
 
     Returns
     -------
@@ -88,17 +124,34 @@ def write(
         What was written, the picture first.
     """
     entries = text_entries(result.report, command)
-    files = planned(folder, name, data, extra)
-    if data:
-        provenance = {"title": entries.get("Title", name), "source": entries["Software"], "history": entries["Command"]}
+    files = wanted.paths()
+    if wanted.data:
+        provenance = {
+            "title": entries.get("Title", wanted.name),
+            "source": entries["Software"],
+            "history": entries["Command"],
+        }
         more = {key.lower().replace(" ", "_"): entries[key] for key in ("Scene hash", "Seed", "Quality")}
-        dataset.write(dataset.dataset(result, provenance | more), folder / f"{name}.nc")
-    if "exr" in extra:
-        images.write_exr(folder / f"{name}.exr", linear_rgb(result.xyz), text=entries)
-    if "tiff" in extra:
-        images.write_tiff(folder / f"{name}.tiff", linear_rgb(result.xyz), text=entries)
+        dataset.write(dataset.dataset(result, provenance | more), wanted.path("nc"))
+    if "exr" in wanted.extra:
+        images.write_exr(wanted.path("exr"), linear_rgb(result.xyz), text=entries)
+    if "tiff" in wanted.extra:
+        images.write_tiff(wanted.path("tiff"), linear_rgb(result.xyz), text=entries)
+    if wanted.noise_map:
+        images.write_png(wanted.path("noise.png"), noise_picture(result), text=entries)
     report = result.report | {"command": entries["Command"], "files": [path.name for path in files]}
-    with images.replacing(folder / f"{name}.json") as aside:
+    with images.replacing(wanted.path("json")) as aside:
         aside.write_text(json.dumps(report, indent=2, ensure_ascii=False) + "\n", encoding="utf-8")
     images.write_png(files[0], result.developed.rgb, bits=scene.picture.depth_bits, text=entries)
+    wanted.preview_path.unlink(missing_ok=True)
     return files
+
+
+def noise_picture(result: Result) -> Float32Array:
+    """Return a grey picture of the error of displayed lightness, white = 5 % and more, linear, shape (ny, nx, 3).
+
+    Where nothing was traced onto the picture itself it is black: the noise of tables is in the report.
+    """
+    noise = np.zeros(result.xyz.shape[:2]) if result.noise is None else np.nan_to_num(result.noise)
+    level = decode(np.clip(noise / NOISE_WHITE, 0.0, 1.0))
+    return np.repeat(level[..., None], 3, axis=-1).astype(np.float32)

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+import multiprocessing
 import os
 import time
-from collections.abc import Iterator
-from concurrent.futures import Executor, ThreadPoolExecutor
+from collections.abc import Callable, Iterator
+from concurrent.futures import Executor, ProcessPoolExecutor, ThreadPoolExecutor
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -14,13 +16,13 @@ import numpy as np
 import skyoptics
 from skyoptics.colour.develop import Developed, develop
 from skyoptics.colour.observer import weights
-from skyoptics.rendering import memory
-from skyoptics.rendering.build import Job, build
+from skyoptics.rendering import expose, memory
+from skyoptics.rendering.build import CrystalSheet, Job, build
 from skyoptics.rendering.caption import cautions, what_to_look_for
-from skyoptics.rendering.scatter import Progress, Traced, scatter, silent
+from skyoptics.rendering.scatter import Progress, Sampling, Traced, axisymmetric, find_table, is_table, silent
 from skyoptics.scene.digest import scene_hash
 from skyoptics.scene.model import Scene
-from skyoptics.sky.compose import Sheet, radiance
+from skyoptics.sky.compose import Scatterer, Sheet, radiance
 from skyoptics.units import Float32Array, FloatArray
 
 
@@ -33,14 +35,25 @@ class Settings:
     quality : str
         "draft", "normal" or "fine".
     seed : int
-        Of the random numbers; the same seed gives the same picture on any number of threads.
+        Of the random numbers; the same seed gives the same picture on any number of threads and processes.
     threads : int
         Worker threads.
+    processes : int
+        Worker processes for tracing, in place of threads where more than one.
+    rays : int or None
+        Rays of each sheet; overrides the quality.
     """
 
     quality: str = "normal"
     seed: int = 1
     threads: int = field(default_factory=lambda: usable_cores())
+    processes: int = 1
+    rays: int | None = None
+
+    @property
+    def sampling(self) -> Sampling:
+        """What tracing depends on."""
+        return Sampling(self.quality, self.seed, self.rays)
 
 
 @dataclass(frozen=True, eq=False)
@@ -59,6 +72,8 @@ class Result:
         Display colours.
     report : dict
         What was asked, done and reached; JSON types.
+    noise : ndarray or None, shape (ny, nx)
+        One standard error of the displayed lightness [1]; None where nothing was traced onto the picture itself.
     """
 
     job: Job
@@ -66,6 +81,7 @@ class Result:
     xyz: Float32Array
     developed: Developed
     report: dict[str, Any]
+    noise: FloatArray | None = None
 
 
 def usable_cores() -> int:
@@ -126,7 +142,14 @@ def look(
         yield rows, block
 
 
-def render(scene: Scene, where: str, settings: Settings, progress: Progress = silent, data: bool = False) -> Result:
+def render(
+    scene: Scene,
+    where: str,
+    settings: Settings,
+    progress: Progress = silent,
+    data: bool = False,
+    preview: Callable[[Developed], None] | None = None,
+) -> Result:
     """Render a scene.
 
     Parameters
@@ -141,6 +164,8 @@ def render(scene: Scene, where: str, settings: Settings, progress: Progress = si
         Told what goes on.
     data : bool
         Whether the whole radiance will be asked for; counts towards memory.
+    preview : callable, optional
+        Given a developed picture after the first round of a long job.
 
     Returns
     -------
@@ -155,28 +180,81 @@ def render(scene: Scene, where: str, settings: Settings, progress: Progress = si
     """
     start = time.perf_counter()
     job = build(scene, where)
-    memory.check(memory.predict(job.directions.shape, job.bins, len(job.sheets), settings.threads, data))
-    with ThreadPoolExecutor(settings.threads) as executor:
+    memory.check(memory.predict(job, settings.threads, data))
+    picture = scene.picture
+    white = job.sources[0].irradiance @ weights(job.bins, picture.observer) if picture.white == "light" else None
+    with ThreadPoolExecutor(settings.threads) as threads, _tracers(settings, threads) as tracers:
         try:
-            sheets, traced = scatter(job, settings.quality, settings.seed, executor, progress)
+            sheets, traced, works = _scatter(job, settings.sampling, tracers, progress)
+            before = [work.film.traced_rays for work in works]
+
+            def now() -> tuple[Float32Array, Developed]:
+                seen = tristimulus(job, sheets, picture.observer, threads)
+                return seen, develop(seen, picture.exposure_ev, white)
+
+            xyz, developed, noise, parts = None, None, None, []
+            if works:
+
+                def measure() -> list[float]:
+                    nonlocal xyz, developed, noise
+                    xyz, developed = now()
+                    parts, noise = expose.lightness_error(works, job, xyz[..., 1], developed.exposure_ev)
+                    return parts
+
+                def show() -> None:
+                    if preview is not None:
+                        preview(now()[1])
+
+                parts = expose.trace(works, settings.sampling, tracers, measure, progress, show)
             traced_at = time.perf_counter()
-            xyz = tristimulus(job, sheets, scene.picture.observer, executor, progress)
+            if xyz is None or developed is None:
+                xyz = tristimulus(job, sheets, picture.observer, threads, progress)
+                developed = develop(xyz, picture.exposure_ev, white)
         except BaseException:
-            executor.shutdown(wait=True, cancel_futures=True)
+            threads.shutdown(wait=True, cancel_futures=True)
             raise
-    looked_at = time.perf_counter()
-    white = (
-        job.sources[0].irradiance @ weights(job.bins, scene.picture.observer)
-        if scene.picture.white == "light"
-        else None
-    )
-    developed = develop(xyz, scene.picture.exposure_ev, white)
-    times = {
-        "trace": traced_at - start,
-        "look": looked_at - traced_at,
-        "develop": time.perf_counter() - looked_at,
-    }
-    return Result(job, sheets, xyz, developed, report(scene, where, settings, job, traced, developed, xyz, times))
+    traced += [work.summary(rays) for work, rays in zip(works, before, strict=True)]
+    about = report(scene, where, settings, job, traced, developed, xyz)
+    if works:
+        about["lightness_error"] = float(np.sqrt(sum(part**2 for part in parts)))
+        about["lightness_error_target"] = settings.sampling.target if settings.rays is None else None
+    about["seconds"] = {"trace": round(traced_at - start, 3), "look": round(time.perf_counter() - traced_at, 3)}
+    return Result(job, sheets, xyz, developed, about, noise)
+
+
+@contextmanager
+def _tracers(settings: Settings, threads: Executor) -> Iterator[Executor]:
+    """Give what traces: the threads, or processes of their own."""
+    if settings.processes <= 1:
+        yield threads
+        return
+    context = multiprocessing.get_context("spawn")
+    with ProcessPoolExecutor(settings.processes, mp_context=context) as processes:
+        try:
+            yield processes
+        except BaseException:
+            processes.shutdown(wait=True, cancel_futures=True)
+            raise
+
+
+def _scatter(
+    job: Job, sampling: Sampling, executor: Executor, progress: Progress
+) -> tuple[list[Sheet], list[Traced], list[expose.Work]]:
+    """Return the sheets, how their tables were come by, and the films that are still to be traced."""
+    sheets, traced, works = [], [], []
+    scatterer: Scatterer
+    for sheet in job.sheets:
+        if is_table(sheet):
+            table, how = find_table(sheet, job, sampling, executor, progress)
+            scatterer = axisymmetric(sheet, table, job.sources[0].disc)
+            traced.append(how)
+        else:
+            assert isinstance(sheet, CrystalSheet)
+            work = expose.begin(sheet, job, sampling.seed)
+            scatterer = work.scatterer()
+            works.append(work)
+        sheets.append(Sheet(sheet.name, scatterer, sheet.amount))
+    return sheets, traced, works
 
 
 def tristimulus(
@@ -198,7 +276,6 @@ def report(
     traced: list[Traced],
     developed: Developed,
     xyz: Float32Array,
-    times: dict[str, float],
 ) -> dict[str, Any]:
     """Return what was asked, done and reached, in JSON types; no absolute path in it."""
     luminance = xyz[..., 1][np.isfinite(xyz[..., 1])]
@@ -221,9 +298,8 @@ def report(
         },
         "rolled_off_share": developed.clipped,
         "out_of_gamut_share": developed.out_of_gamut,
-        "traced_rays": sum(how.summary()["traced_rays"] for how in traced),
+        "traced_rays": sum(how.traced_rays for how in traced),
         "sheets": [how.summary() for how in traced],
-        "seconds": {name: round(value, 3) for name, value in times.items()},
         "look_for": scene.look_for or what_to_look_for(job),
         "cautions": cautions(job),
     }

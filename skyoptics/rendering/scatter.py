@@ -1,9 +1,10 @@
-"""From what a sheet holds to what answers for it: tables found or traced, then seen under the source's disc."""
+"""From what a sheet holds to what answers for it: tables found or traced, films for crystals that stand in some way."""
 
 from __future__ import annotations
 
 from concurrent.futures import Executor
 from dataclasses import dataclass
+from math import ceil
 from typing import Any, Protocol
 
 import numpy as np
@@ -14,11 +15,13 @@ from skyoptics.optics.bins import Bins
 from skyoptics.optics.source import Disc
 from skyoptics.optics.table import ScatteringTable
 from skyoptics.rendering import store
-from skyoptics.rendering.build import DropSheet, Job
-from skyoptics.sky.compose import Sheet
+from skyoptics.rendering.build import CrystalSheet, DropSheet, Job
 
 QUALITY = {"draft": 0.02, "normal": 0.01, "fine": 0.005}
-"""Light-weighted relative standard error of a sphere table's bins, by the name of the quality."""
+"""Noise target by the name of the quality: light-weighted relative standard error of a table's bins, and rms error of the
+displayed lightness of a picture with films."""
+CRYSTAL_ANGLES = 3600
+"""Angle bins of a table of randomly oriented crystals that a picture reads."""
 
 
 class Progress(Protocol):
@@ -33,109 +36,158 @@ def silent(stage: str, done: int, total: int) -> None:
 
 
 @dataclass(frozen=True)
+class Sampling:
+    """How much to trace, and with which random numbers.
+
+    Parameters
+    ----------
+    quality : str
+        A key of `QUALITY`.
+    seed : int
+        Of the random numbers.
+    rays : int or None
+        Rays of each sheet; overrides the quality.
+    """
+
+    quality: str
+    seed: int
+    rays: int | None = None
+
+    @property
+    def target(self) -> float:
+        """Noise target [1]."""
+        return QUALITY[self.quality]
+
+
+@dataclass(frozen=True)
 class Traced:
     """How a sheet's light was come by, for the report."""
 
     name: str
     trace_key: str
     reused: bool
+    traced_rays: int
     rays: int
     about: dict[str, Any]
 
     def summary(self) -> dict[str, Any]:
-        """Return it for a report; `traced_rays` counts this run alone."""
+        """Return it for a report; `traced_rays` counts this run alone, `rays` all that the picture rests on."""
         return {
             "name": self.name,
             "trace_key": self.trace_key,
             "reused": self.reused,
-            "traced_rays": 0 if self.reused else self.rays,
-            "table_rays": self.rays,
+            "traced_rays": self.traced_rays,
+            "rays": self.rays,
             **self.about,
         }
 
 
-def drop_key(sheet: DropSheet, job: Job, quality: str, seed: int) -> str:
-    """Return the trace key of a sheet's ray table: all that the table depends on."""
-    from skyoptics.droplets import angles
+def is_table(sheet: DropSheet | CrystalSheet) -> bool:
+    """Return whether a sheet's light depends on the scattering angle alone."""
+    return isinstance(sheet, DropSheet) or sheet.orientation.name == "random"
 
+
+def table_key(sheet: DropSheet | CrystalSheet, job: Job, sampling: Sampling) -> str:
+    """Return the trace key of a sheet's table: all that the table depends on."""
+    shared: dict[str, Any] = {
+        "index": sheet.index.key,
+        "bins": job.bins.edges,
+        "seed": sampling.seed,
+        "target": sampling.rays or sampling.target,
+        "kernels": KERNEL_HASH,
+    }
+    if isinstance(sheet, DropSheet):
+        from skyoptics.droplets import angles
+
+        edges = angles.default_edges(sheet.index, job.bins)
+        return store.trace_key(kind="drops by rays", radius=sheet.radius, edges=edges, **shared)
     return store.trace_key(
-        kind="drops by rays",
-        index=sheet.index.key,
-        radius=sheet.radius,
-        bins=job.bins.edges,
-        edges=angles.default_edges(sheet.index, job.bins),
-        seed=seed,
-        target=QUALITY[quality],
-        kernels=KERNEL_HASH,
+        kind="random crystals",
+        count=CRYSTAL_ANGLES,
+        diameter=sheet.diameter,
+        shape=sheet.shape.packed_slabs(),
+        **shared,
     )
 
 
-def least_rays(bins: Bins) -> int:
+def least_rays(sheet: DropSheet | CrystalSheet, bins: Bins) -> int:
     """Return the rays that a new table takes at least."""
-    from skyoptics.droplets import geometric
-    from skyoptics.kernels import sphere
+    if isinstance(sheet, DropSheet):
+        from skyoptics.droplets import geometric
+        from skyoptics.kernels import sphere
 
-    return int(geometric.LEAST_BATCHES * sphere.RAYS * len(bins))
+        return int(geometric.LEAST_BATCHES * sphere.RAYS * len(bins))
+    from skyoptics.crystals import table
+
+    return table.LEAST_BATCHES * table.BATCH * len(bins)
 
 
-def drop_table(
-    sheet: DropSheet, job: Job, quality: str, seed: int, executor: Executor | None, progress: Progress
+def find_table(
+    sheet: DropSheet | CrystalSheet,
+    job: Job,
+    sampling: Sampling,
+    executor: Executor | None,
+    progress: Progress = silent,
 ) -> tuple[ScatteringTable, Traced]:
-    """Return the ray table of a sheet of drops, from the store where it is there.
+    """Return the ray table of a sheet, from the store where it is there.
 
     Parameters
     ----------
-    sheet : DropSheet
-        Which drops.
+    sheet : DropSheet or CrystalSheet
+        Drops, or crystals that stand in any way.
     job : Job
         For the spectral bins.
-    quality : str
-        A key of `QUALITY`.
-    seed : int
-        Of the random numbers.
+    sampling : Sampling
+        How much to trace.
     executor : Executor or None
         Runs the batches.
     progress : callable
         Told about batches.
     """
-    from skyoptics.droplets import geometric
-
-    key = drop_key(sheet, job, quality, seed)
+    key = table_key(sheet, job, sampling)
     table = store.find(key)
     reused = table is not None
     if table is None:
-        table = geometric.scattering_table(
-            sheet.index,
-            sheet.radius,
-            job.bins,
-            seed=seed,
-            relative_error=QUALITY[quality],
-            executor=executor,
-            progress=lambda done, total: progress(f"tracing {sheet.name}", done, total),
-        )
+        table = _trace_table(sheet, job, sampling, executor, progress)
         store.keep(key, table)
     report = table.report
     about = {f"{name}_at_most": max(report[name]) for name in ("relative_error", "absorbed", "cut_off")}
-    about["target_reached"] = report["target_reached"]
-    return table, Traced(sheet.name, key, reused, int(report["rays"]), about)
+    about["target_reached"] = sampling.rays is not None or report["target_reached"]
+    rays = int(report["rays"])
+    return table, Traced(sheet.name, key, reused, 0 if reused else rays, rays, about)
 
 
-def drop_scatterer(table: ScatteringTable, orders: tuple[int, ...], disc: Disc) -> Axisymmetric:
-    """Return a scatterer of some orders of a ray table, under a disc.
+def _trace_table(
+    sheet: DropSheet | CrystalSheet, job: Job, sampling: Sampling, executor: Executor | None, progress: Progress
+) -> ScatteringTable:
+    def tell(done: int, total: int) -> None:
+        progress(f"tracing {sheet.name}", done, total)
+
+    if isinstance(sheet, DropSheet):
+        from skyoptics.droplets import geometric
+        from skyoptics.kernels import sphere
+
+        least, batch = geometric.LEAST_BATCHES, sphere.RAYS
+    else:
+        from skyoptics.crystals import table
+
+        least, batch = table.LEAST_BATCHES, table.BATCH
+    shared: dict[str, Any] = {"seed": sampling.seed, "executor": executor, "progress": tell}
+    if sampling.rays is None:
+        shared["relative_error"] = sampling.target
+    else:  # a target that no number of batches reaches, so that the number given rules
+        shared |= {"relative_error": 1e-5, "max_batches": max(least, ceil(sampling.rays / (batch * len(job.bins))))}
+    if isinstance(sheet, DropSheet):
+        return geometric.scattering_table(sheet.index, sheet.radius, job.bins, **shared)
+    return table.scattering_table(
+        sheet.shape, sheet.index, job.bins, size=sheet.diameter, count=CRYSTAL_ANGLES, **shared
+    )
+
+
+def axisymmetric(sheet: DropSheet | CrystalSheet, table: ScatteringTable, disc: Disc) -> Axisymmetric:
+    """Return a sheet's scatterer from its ray table, under a disc.
 
     The traced half of the extinction carries the table's light; the other half is diffraction, which rays leave out.
     """
-    shown = table.select([str(order) for order in orders]).total()
-    return Axisymmetric(over_disc(shown, disc), 0.5 * np.asarray(table.albedo))
-
-
-def scatter(
-    job: Job, quality: str, seed: int, executor: Executor | None, progress: Progress = silent
-) -> tuple[list[Sheet], list[Traced]]:
-    """Return the job's sheets, ready to be looked at, and how they were come by."""
-    sheets, traced = [], []
-    for sheet in job.sheets:
-        table, how = drop_table(sheet, job, quality, seed, executor, progress)
-        sheets.append(Sheet(sheet.name, drop_scatterer(table, sheet.orders, job.sources[0].disc), sheet.amount))
-        traced.append(how)
-    return sheets, traced
+    shown = table.select([str(order) for order in sheet.orders]) if isinstance(sheet, DropSheet) else table
+    return Axisymmetric(over_disc(shown.total(), disc), 0.5 * np.asarray(table.albedo))

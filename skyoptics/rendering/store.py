@@ -51,7 +51,7 @@ def find(key: str) -> ScatteringTable | None:
     if not path.exists():
         return None
     try:
-        with np.load(path, allow_pickle=False) as stored:
+        with path.open("rb") as file, np.load(file, allow_pickle=False) as stored:
             about = json.loads(str(stored["about"]))
             if about["key"] != key or about["format"] != FORMAT:
                 raise ValueError("it belongs to another job")

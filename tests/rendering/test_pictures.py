@@ -1,5 +1,7 @@
 """Renders against closed forms: where the bow stands, how bright, which colours, the same bits."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
@@ -9,7 +11,7 @@ from skyoptics.geometry.directions import Directions
 from skyoptics.optics import bows
 from skyoptics.rendering.build import build
 from skyoptics.rendering.run import Settings, render
-from skyoptics.rendering.scatter import drop_scatterer, drop_table, scatter, silent
+from skyoptics.rendering.scatter import Sampling, axisymmetric, find_table
 from skyoptics.scene.load import from_text
 from skyoptics.units import DEG
 
@@ -22,6 +24,7 @@ LENSES = {
     "panorama": "width_deg = 110\nheight_deg = 100",
 }
 DRAFT = Settings(quality="draft", seed=5, threads=2)
+SAMPLING = Sampling("draft", 5)
 
 
 def scene(camera, light="elevation_deg = 15", air="orders = [2]", picture="wavelengths_nm = [550]\nbackground = 0.0"):
@@ -39,8 +42,10 @@ def test_first_lit_pixel_stands_on_the_caustic(lens, roll):
     camera = f"lens = '{lens}'\n{LENSES[lens]}\nwidth_px = 900\n{aim}"
     described = scene(camera, light="elevation_deg = 15\ndisc = 'point'")
     job = build(described, "test")
-    sheets, _ = scatter(job, "draft", 5, None)
-    light = sheets[0].scatterer.phase(job.sources[0], job.directions, slice(None))[..., 0]
+    table, _ = find_table(job.sheets[0], job, SAMPLING, None)
+    light = axisymmetric(job.sheets[0], table, job.sources[0].disc).phase(job.sources[0], job.directions, slice(None))[
+        ..., 0
+    ]
     antisolar = -job.sources[0].direction
     index = float(job.sheets[0].index(job.bins.centre).real[0])
     radius = np.pi - float(bows.scattering_angle(index, 2))
@@ -79,7 +84,7 @@ def test_radiance_is_irradiance_phase_amount():
 def test_phase_integrates_to_half_the_scattered_share():
     """Ray drops: ∫ phase dΩ = ½ (1 − absorbed − cut off), the other half of the extinction being diffraction."""
     job = build(scene("focal_mm = 20", picture="wavelengths_nm = [450, 700]"), "test")
-    table, _ = drop_table(job.sheets[0], job, "draft", 5, None, silent)
+    table, _ = find_table(job.sheets[0], job, SAMPLING, None)
     report = table.report
     wanted = 0.5 * (1 - np.array(report["absorbed"]) - np.array(report["cut_off"]))
     grids = [
@@ -93,7 +98,7 @@ def test_phase_integrates_to_half_the_scattered_share():
         (job.sources[0].disc, grids[0], 1e-4),
         (job.sources[0].disc, grids[1], 1e-4),
     ):
-        scatterer = drop_scatterer(table, tuple(range(11)), disc)
+        scatterer = axisymmetric(replace(job.sheets[0], orders=tuple(range(11))), table, disc)
         phase = scatterer.phase(job.sources[0], grid)
         assert np.einsum("yxw,yx->w", phase, grid.solid_angle()) == pytest.approx(wanted, abs=tolerance)
 
