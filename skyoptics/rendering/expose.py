@@ -97,7 +97,7 @@ def rays_by_bin(bins: Bins, pixels: int) -> Any:
     """
     seen = weights(bins).sum(axis=1) * spectrum.irradiance(bins)
     share = np.clip(seen / seen.max(), 0.125, 1.0)
-    batch = 1 << int(np.clip(ceil(np.log2(max(pixels, 1) / 16.0)), 14, 20))
+    batch = 1 << int(np.clip(ceil(np.log2(max(pixels, 1) / 6.0)), 14, 20))
     return (np.maximum(np.round(batch * share / 256.0), 1) * 256).astype(np.int64)
 
 
@@ -250,8 +250,9 @@ def lightness_error(
         amount = np.divide(
             work.sheet.amount(np.nan_to_num(elevation)) * ratio, solid, out=np.zeros_like(solid), where=solid > 0.0
         )
-        films_light += amount * work.film.luminance()
-        sigma = amount * np.sqrt(work.film.variance())
+        light, variance = work.film.statistics()
+        films_light += amount * light
+        sigma = amount * np.sqrt(variance)
         errors.append(0.5 * (_lightness(here + sigma) - _lightness(np.maximum(here - sigma, 0.0))))
     lit = inside & (films_light > LIT * here)
     parts = [float(np.sqrt(np.mean(error[lit] ** 2))) if lit.any() else 0.0 for error in errors]

@@ -23,6 +23,7 @@ from uuid import uuid4
 import numpy as np
 
 from skyoptics.geometry.directions import Directions
+from skyoptics.kernels.film import add_plane, luminance_and_variance
 from skyoptics.optics.source import Source
 from skyoptics.rendering.store import folder as store_folder
 from skyoptics.units import Float32Array, FloatArray
@@ -81,12 +82,10 @@ class Film:
         )
 
     def add(self, band: int, plane: Float32Array, tally: dict[str, float]) -> None:
-        """Add the next batch of a bin; the plane is used up."""
+        """Add the next batch of a bin."""
         self.whole = False
-        self.sums[band] += plane
-        plane *= np.float32(self.reference[band] / (2.0 * self.rays[band]))
-        plane *= plane
-        self.squares += plane
+        weight = np.float32(self.reference[band] / (2.0 * self.rays[band]))
+        add_plane(self.sums[band].reshape(-1), self.squares.reshape(-1), plane.reshape(-1), weight)
         self.counts[band] += 1
         for name, value in tally.items():
             self.tally[name] = self.tally.get(name, 0.0) + value
@@ -113,23 +112,19 @@ class Film:
         """Return what turns sums into phase · solid angle, shape (nλ,)."""
         return 1.0 / (2.0 * self.rays * np.maximum(self.counts, 1))
 
-    def luminance(self) -> FloatArray:
-        """Return the mean of reference luminance · solid angle, shape (ny, nx)."""
-        total = np.zeros(self.squares.shape)
-        for band, scale in enumerate(self.scale()):
-            total += self.reference[band] * scale * self.sums[band]
-        return total
-
-    def variance(self) -> FloatArray:
-        """Return the variance of the mean of reference luminance · solid angle, shape (ny, nx)."""
-        count = float(self.counts.mean())
-        if self.rounds < 2:
-            return np.full(self.squares.shape, np.inf)
-        mean_square = np.zeros(self.squares.shape)
-        for band, scale in enumerate(self.scale()):
-            mean_square += (self.reference[band] * scale * self.sums[band].astype(np.float64)) ** 2
-        spread = self.squares.astype(np.float64) - mean_square * count
-        return np.maximum(spread, 0.0) / (count * (count - 1.0))
+    def statistics(self) -> tuple[FloatArray, FloatArray]:
+        """Return mean and variance of the mean of reference luminance · solid angle, both (ny, nx)."""
+        shape = self.squares.shape
+        luminance, variance = np.empty(shape), np.empty(shape)
+        luminance_and_variance(
+            self.sums.reshape(len(self.rays), -1),
+            self.squares.reshape(-1),
+            self.reference * self.scale(),
+            float(self.counts.mean()) if self.rounds > 1 else 1.0,
+            luminance.reshape(-1),
+            variance.reshape(-1),
+        )
+        return luminance, variance
 
 
 @dataclass(frozen=True, eq=False)

@@ -24,6 +24,11 @@ CRYSTAL_ANGLES = 3600
 """Angle bins of a table of randomly oriented crystals that a picture reads."""
 
 
+CRYSTAL_TABLE_ERROR = 6.0
+"""Error of a bin of a crystal table that a picture reads, in units of the noise target: its 0.05° bins are averaged over
+the sun's disc or a pixel and its wavelengths over the eye before anything is seen of them."""
+
+
 class Progress(Protocol):
     """What a long job tells: a stage in words, how much of it is done, how much there is."""
 
@@ -174,7 +179,7 @@ def _trace_table(
         least, batch = table.LEAST_BATCHES, table.BATCH
     shared: dict[str, Any] = {"seed": sampling.seed, "executor": executor, "progress": tell}
     if sampling.rays is None:
-        shared["relative_error"] = sampling.target
+        shared["relative_error"] = sampling.target * (1.0 if isinstance(sheet, DropSheet) else CRYSTAL_TABLE_ERROR)
     else:  # a target that no number of batches reaches, so that the number given rules
         shared |= {"relative_error": 1e-5, "max_batches": max(least, ceil(sampling.rays / (batch * len(job.bins))))}
     if isinstance(sheet, DropSheet):

@@ -86,3 +86,41 @@ def test_bad_input(command, words, code, said):
     done = command("phase", "drop", "--quality", "draft", "--step-deg", 5, *words)
     assert done.code == code
     assert said in done.err
+
+
+def test_halos_begin_at_minimum_deviation(command):
+    """Light of the 60° and 90° face pairs begins at 2 asin(n sin(A/2)) − A: 21.839° and 45.733° for n = 1.31."""
+    done = command(
+        "phase",
+        "crystal",
+        "--index",
+        1.31,
+        "--wavelength-nm",
+        550,
+        "--step-deg",
+        0.05,
+        "--quality",
+        "draft",
+        "--csv",
+        "h.csv",
+    )
+    assert done.code == 0
+    data = read("h.csv")
+    for angle, apex in ((21.839, 60.0), (45.733, 90.0)):
+        assert angle == pytest.approx((2 * np.arcsin(1.31 * np.sin(apex / 2 * DEG)) - apex * DEG) / DEG, abs=5e-4)
+        near = data[np.abs(data[:, 1] - angle) < 1.0]
+        dark = near[near[:, 1] < angle - 0.1, 2]
+        step = 0.5 * (near[:, 2].max() + dark.mean())
+        edge = near[(near[:, 2] > step).argmax(), 1] - 0.025  # lower edge of the first bright bin
+        assert edge == pytest.approx(angle, abs=0.05)
+        assert near[:, 2].max() > 2.0 * dark.mean()
+
+
+def test_asymmetry_of_random_prisms(command):
+    """(g + 1)/2 with the straight-through part at aspect 1: 0.7704 (Takano & Liou, J. Atmos. Sci. 46, 3 (1989), from memory)."""
+    done = command(
+        "phase", "crystal", "--aspect", 1.0, "--index", 1.311, "--wavelength-nm", 550, "--step-deg", 1, "--json"
+    )
+    report = json.loads(done.out)
+    assert (report["asymmetry"][0] + 1) / 2 == pytest.approx(0.7704, abs=0.004)
+    assert report["scattered"][0] + report["absorbed"][0] == pytest.approx(1.0, abs=2e-4)

@@ -76,31 +76,33 @@ def test_parhelic_circle_and_120_degree_parhelia():
         assert elevation == pytest.approx(30.0, abs=0.05)
 
 
-def light_around_the_sun(height):
-    """Columns: light between 21° and 24° from the sun, by position angle in 36 sectors, 0 = above."""
+def light_around_the_sun(height, farthest):
+    """Columns: brightest 0.7° wide ring between 21.5° and `farthest` from the sun, in 18 sectors of position angle."""
     from skyoptics.geometry.axes import angle_between, around
 
-    camera = "lens = 'equidistant'\nfocal_mm = 36\nsensor_mm = [36, 36]\nwidth_px = 400\naim = 'sun'"
-    described = scene(
-        height, "orientation = 'column'\ntilt_deg = 0\naspect = 3\nplace = 'curtain'\nbelow_horizon = true", camera
-    )
-    result = render(described, "test", Settings(seed=3, rays=8_000_000))
+    camera = "lens = 'equidistant'\nfocal_mm = 22\nsensor_mm = [36, 36]\nwidth_px = 400\naim = 'sun'"
+    air = "orientation = 'column'\ntilt_deg = 0\naspect = 3\nplace = 'curtain'\nbelow_horizon = true"
+    result = render(scene(height, air, camera), "test", Settings(seed=3, rays=8_000_000))
     view, sun = result.job.directions.vectors(), result.job.sources[0].direction
     up, right = around(sun, 90 * DEG, 0.0), around(sun, 90 * DEG, 90 * DEG)
-    position = np.mod(np.arctan2(view @ right, view @ up) / DEG, 360.0)
-    from_sun = angle_between(view, sun) / DEG
-    near = (from_sun > 21.5) & (from_sun < 25.0)
-    sector = (position[near] // 10).astype(int)
-    light = np.bincount(sector, result.xyz[..., 1][near], 36) / np.bincount(sector, minlength=36)
+    sector = (np.mod(np.arctan2(view @ right, view @ up) / DEG, 360.0) // 10).astype(int)
+    ring = ((angle_between(view, sun) / DEG - 21.5) / 0.7).astype(int)
+    rings = int((farthest - 21.5) / 0.7)
+    near = (angle_between(view, sun) > 21.5 * DEG) & (ring < rings)
+    cell = sector[near] * rings + ring[near]
+    mean = np.bincount(cell, result.xyz[..., 1][near], 36 * rings) / np.bincount(cell, minlength=36 * rings)
+    light = mean.reshape(36, rings).max(axis=1)
     return light / light.max()
 
 
 def test_columns_close_to_a_circumscribed_halo_only_above_29_degrees():
-    """All position angles have 60° light when the sun is above 29.25° (n = 1.31); at 20° the sides stay empty."""
-    assert light_around_the_sun(35).min() > 0.01
-    low = light_around_the_sun(20)
-    sides = low[11:15], low[21:25]
-    assert max(part.max() for part in sides) < 0.01
+    """All position angles have 60° light when the sun is above 29.25° (n = 1.31); at 20° the sides stay empty.
+
+    At 35° the circumscribed halo hangs out to 36° at the sides; at 20° other arcs come near from 33° on.
+    """
+    assert light_around_the_sun(35, 38.0).min() > 0.015
+    low = light_around_the_sun(20, 32.0)
+    assert max(low[11:15].max(), low[21:25].max()) < 0.01
     assert low[0] > 0.3
 
 
@@ -110,15 +112,17 @@ def test_left_and_right_are_alike():
     described = scene(25, "orientation = 'column'\ntilt_deg = 2\naspect = 1.5", camera)
     job = build(described, "test")
     work = expose.begin(job.sheets[0], job, 17)
-    for _ in work.trace(16, None, silent, lambda: None):
+    for _ in work.trace(48, None, silent, lambda: None):
         pass
-    light, error = work.film.luminance(), np.sqrt(work.film.variance())
+    light, variance = work.film.statistics()
+    error = np.sqrt(variance)
     spread = np.hypot(error, error[:, ::-1])
-    hits = light > 30 * work.film.reference.sum() / work.film.rays.sum() / 2
-    z = (light - light[:, ::-1])[hits & (spread > 0)] / spread[hits & (spread > 0)]
+    chosen = light + light[:, ::-1] > 10 * spread
+    z = (light - light[:, ::-1])[chosen] / spread[chosen]
     assert len(z) > 1000
-    assert abs(z.mean()) < 5 / np.sqrt(len(z))
     assert 0.8 < np.sqrt(np.mean(z**2)) < 1.25
+    halves = light[:, :60].sum(), light[:, 60:].sum()
+    assert halves[0] == pytest.approx(halves[1], rel=5 * np.sqrt(variance.sum()) / halves[0])
 
 
 def honesty(seeds, rounds):
@@ -133,8 +137,9 @@ def honesty(seeds, rounds):
         work = expose.begin(job.sheets[0], job, 1000 + seed)
         for _ in work.trace(rounds, None, silent, lambda: None):
             pass
-        pictures.append(work.film.luminance())
-        variances.append(work.film.variance())
+        light, variance = work.film.statistics()
+        pictures.append(light)
+        variances.append(variance)
         rays = work.film.traced_rays
     mean = np.mean(pictures, axis=0)
     unit = work.film.reference.mean() / (2 * rays / 2)  # luminance that one average hit of one ray adds to its bin
