@@ -2,15 +2,10 @@
 
 from __future__ import annotations
 
-import os
-
-os.environ.setdefault("MIEPYTHON_USE_JIT", "1")  # read when miepython is imported
-
 import numpy as np
 import pytest
 
-from skyoptics.droplets import averages, legendre, mie
-from skyoptics.droplets.sizes import Gaussian, Single
+from skyoptics.droplets import legendre, mie
 from skyoptics.errors import DomainError
 
 # Wiscombe, NCAR/TN-140+STR (1979, rev. 1996), output MVTstNew; m there is n − ik: conjugated here
@@ -36,8 +31,62 @@ WISCOMBE = [
 @pytest.mark.parametrize(("m", "x", "extinction", "scattering", "asymmetry"), WISCOMBE)
 def test_wiscombe_efficiencies(m, x, extinction, scattering, asymmetry):
     q_ext, q_sca, g = mie.efficiencies(m, x)
-    # seven printed digits: half a unit of the last may be 5e-7
-    np.testing.assert_allclose([q_ext, q_sca, g * q_sca], [extinction, scattering, asymmetry], rtol=1e-6)
+    np.testing.assert_allclose([q_ext, q_sca], [extinction, scattering], rtol=1e-6)
+    # the program behind the table switches to a small-sphere formula below x = 0.1, good to 1.5e-6 in g there; the exact
+    # 1.07427734367e-8 is checked below
+    np.testing.assert_allclose(g * q_sca, asymmetry, rtol=2e-6 if (m, x) == (0.75, 0.099) else 1e-6)
+
+
+def decimal_sphere(m, x, orders=8):
+    """Return Q_ext and g Q_sca of a small sphere of real index from power series in 60 digits (DLMF 10.53)."""
+    from decimal import Decimal, localcontext
+
+    with localcontext() as context:
+        context.prec = 60
+        m, x, small = Decimal(m), Decimal(x), Decimal(10) ** -58
+
+        def odd(n):
+            return Decimal(int(np.prod(np.arange(1, n + 1, 2, dtype=object))))
+
+        def series(first, step, z):
+            total, term, k = Decimal(0), first, 0
+            while abs(term) > small * abs(total + term):
+                total, k = total + term, k + 1
+                term = term * (-z * z / 2) / (k * (2 * k + step))
+            return total
+
+        def psi(n, z):
+            return series(z ** (n + 1) / odd(2 * n + 1), 2 * n + 1, z)
+
+        def chi(n, z):
+            return series(odd(2 * n - 1) / z**n, -1 - 2 * n, z)
+
+        def slope(function, n, z):
+            return function(n - 1, z) - n * function(n, z) / z
+
+        def coefficient(n, first, second):
+            inner, inner_slope = psi(n, m * x), slope(psi, n, m * x)
+            p = first * inner_slope * psi(n, x) - second * inner * slope(psi, n, x)
+            q = first * inner_slope * chi(n, x) - second * inner * slope(chi, n, x)
+            return p * p / (p * p + q * q), p * q / (p * p + q * q)
+
+        a = [coefficient(n, 1, m) for n in range(1, orders)]
+        b = [coefficient(n, m, 1) for n in range(1, orders)]
+
+        def dot(u, v):
+            return u[0] * v[0] + u[1] * v[1]
+
+        extinction = sum((2 * n + 1) * (a[n - 1][0] + b[n - 1][0]) for n in range(1, orders))
+        asymmetry = sum(Decimal(2 * n + 1) / (n * (n + 1)) * dot(a[n - 1], b[n - 1]) for n in range(1, orders))
+        for n in range(1, orders - 1):
+            asymmetry += Decimal(n * (n + 2)) / (n + 1) * (dot(a[n - 1], a[n]) + dot(b[n - 1], b[n]))
+        return float(2 * extinction / x**2), float(4 * asymmetry / x**2)
+
+
+@pytest.mark.parametrize(("m", "x"), [("0.75", "0.099"), ("1.333", "0.02"), ("1.5", "1.1")])
+def test_small_spheres_against_sixty_digits(m, x):
+    q_ext, q_sca, g = mie.efficiencies(float(m), float(x))
+    np.testing.assert_allclose([q_ext, g * q_sca], decimal_sphere(m, x), rtol=1e-10)
 
 
 def test_wiscombe_backscatter():
@@ -129,25 +178,6 @@ def median_amplitude(s1, s2):
     return float(np.median(np.abs(np.concatenate([s1, s2]))))
 
 
-def against_miepython(count):
-    import miepython
-
-    cosine = np.cos(np.linspace(0.0, np.pi, 61))
-    for m, x in random_points(count, 20):
-        theirs = np.conj(miepython.S1_S2(m.conjugate(), x, cosine, norm="wiscombe"))
-        ours = np.array(mie.amplitudes(m, x, cosine, terms=int(x + 4.05 * x**0.33333 + 2)))
-        assert np.max(np.abs(ours - theirs)) < 1e-8 * median_amplitude(*theirs), (m, x)
-
-
-def test_against_miepython():
-    against_miepython(30)
-
-
-@pytest.mark.slow
-def test_against_miepython_at_hundred_points():
-    against_miepython(100)
-
-
 def extended_sum(m, x, cosine, terms):
     """Sum the series in 80-bit floats, straight from Bohren & Huffman eq. 4.47, 4.74, 4.88."""
     real, whole = np.longdouble, np.clongdouble
@@ -187,7 +217,42 @@ def extended_sum(m, x, cosine, terms):
     return s1, s2
 
 
-@pytest.mark.skipif(np.finfo(np.longdouble).eps > 1e-18, reason="long double is not longer here")
+LONGER = pytest.mark.skipif(np.finfo(np.longdouble).eps > 1e-18, reason="long double is not longer here")
+
+
+def against_miepython(count):
+    """Compare with the same number of terms; where it differs by more than 1e-8 the longer sum must side with us.
+
+    It does so for some large spheres (x above 2000), where miepython is off by up to 3e-7 of the median near the axis.
+    """
+    import miepython
+
+    cosine = np.cos(np.linspace(0.0, np.pi, 61))
+    disputed = 0
+    for m, x in random_points(count, 20):
+        terms = int(x + 4.05 * x**0.33333 + 2)
+        theirs = np.conj(miepython.S1_S2(m.conjugate(), x, cosine, norm="wiscombe"))
+        ours = np.array(mie.amplitudes(m, x, cosine, terms=terms))
+        median = median_amplitude(*theirs)
+        if np.max(np.abs(ours - theirs)) > 1e-8 * median:
+            disputed += 1
+            exact = np.array(extended_sum(m, x, cosine, terms))
+            assert np.max(np.abs(ours - exact)) < 1e-9 * median, (m, x)
+    assert disputed <= count // 15
+
+
+@LONGER
+def test_against_miepython():
+    against_miepython(30)
+
+
+@pytest.mark.slow
+@LONGER
+def test_against_miepython_at_hundred_points():
+    against_miepython(100)
+
+
+@LONGER
 def test_against_extended_precision():
     cosine = np.cos(np.linspace(0.0, np.pi, 37))
     points = [*random_points(17, 21), (1.333, 4999.7), (1.3347 + 2e-9j, 1000 * np.pi), (10 + 10j, 800.0)]
@@ -277,88 +342,3 @@ def test_cosine_outside_its_range():
         mie.amplitudes(1.33, 10.0, [0.5, 1.1])
     with pytest.raises(DomainError, match="cosine"):
         mie.amplitudes(1.33, 10.0, np.nan)
-
-
-@pytest.mark.parametrize(("m", "x"), [(1.333, 3.0), (1.5 + 0.2j, 60.0)])
-def test_legendre_moments(m, x):
-    count = legendre.nodes_needed(x)
-    nodes, weights = legendre.gauss_legendre(count)
-    _, q_sca, g = mie.efficiencies(m, x)
-    p11 = mie.mueller_elements(mie.products(*mie.amplitudes(m, x, nodes)), 4.0 / (x**2 * q_sca))[:, 0]
-    moments = legendre.moments(p11, nodes, weights, count)
-    assert moments[0] == pytest.approx(1.0, abs=1e-9)
-    assert moments[1] == pytest.approx(g, abs=1e-9)
-    cosine = np.cos(np.linspace(0.0, np.pi, 91))
-    direct = mie.mueller_elements(mie.products(*mie.amplitudes(m, x, cosine)), 4.0 / (x**2 * q_sca))[:, 0]
-    np.testing.assert_allclose(legendre.series(moments, cosine), direct, rtol=1e-6, atol=1e-6)
-
-
-@pytest.mark.parametrize("count", [1, 2, 3, 8, 101])
-def test_gauss_legendre_rule(count):
-    nodes, weights = legendre.gauss_legendre(count)
-    expected, expected_weights = np.polynomial.legendre.leggauss(count)
-    np.testing.assert_allclose(nodes[::-1], expected, atol=1e-14)
-    np.testing.assert_allclose(weights[::-1], expected_weights, rtol=1e-11)
-
-
-def test_average_of_one_size_is_that_size():
-    cosine = np.cos(np.deg2rad([0.0, 30.0, 140.0, 180.0]))
-    wavelength = np.array([450e-9, 650e-9])
-    found = averages.average(Single(3e-6), [1.3396, 1.3317], wavelength, cosine)
-    for row, m in enumerate((1.3396, 1.3317)):
-        x = 2 * np.pi * 3e-6 / wavelength[row]
-        np.testing.assert_allclose(
-            found.products[:, row], mie.products(*mie.amplitudes(m, x, cosine)), rtol=1e-12, atol=1e-9
-        )
-        q_ext, q_sca, g = mie.efficiencies(m, x)
-        area = np.pi * 9e-12
-        np.testing.assert_allclose(
-            [found.extinction[row], found.scattering[row], found.asymmetry[row]], [q_ext * area, q_sca * area, g]
-        )
-        p11 = found.elements[:, row, 0]
-        np.testing.assert_allclose(p11, 2 / (x**2 * q_sca) * found.products[:2, row].sum(axis=0))
-    np.testing.assert_allclose(found.albedo, 1.0)
-
-
-def test_average_does_not_depend_on_threads_and_reaches_its_tolerance():
-    from concurrent.futures import ThreadPoolExecutor
-
-    cosine = np.cos(np.deg2rad(np.linspace(137.0, 150.0, 14)))
-    drops = Gaussian(5e-6, 0.1)
-    alone = averages.average(drops, 1.33468, [550e-9], cosine, tolerance=0.01)
-    with ThreadPoolExecutor(2) as pool:
-        together = averages.average(drops, 1.33468, [550e-9], cosine, tolerance=0.01, executor=pool)
-    np.testing.assert_array_equal(alone.products, together.products)
-    assert np.max(alone.change) <= 0.01
-    fine = averages.average(drops, 1.33468, [550e-9], cosine, tolerance=0.0, largest_level=6)
-    assert fine.sizes > alone.sizes
-    np.testing.assert_allclose(alone.products[0], fine.products[0], rtol=0.02)
-
-
-def test_corona_rings_of_cloud_drops():
-    """Dark rings at 0.60983 and 1.11657 λ/a (Fraunhofer disc, zeros of J1), 5 % spread, within 2.5 %."""
-    wavelength = 550e-9
-    for radius in (10e-6, 20e-6, 40e-6):
-        first = np.arcsin(0.60983 * wavelength / radius)
-        second = np.arcsin(1.11657 * wavelength / radius)
-        angle = np.linspace(0.7 * first, 1.3 * second, 301)
-        found = averages.average(Gaussian(radius, 0.05), 1.33468, wavelength, np.cos(angle), tolerance=0.005)
-        curve = found.products[:2, 0].sum(axis=0)
-        for ring in (first, second):
-            near = np.abs(angle / ring - 1.0) < 0.15
-            dark = angle[near][np.argmin(curve[near])]
-            assert abs(dark / ring - 1.0) < 0.025, (radius, ring)
-
-
-def test_polarisation_at_the_primary_peak_grows_with_size():
-    # Können & de Boer, Appl. Opt. 18, 1961 (1979); values computed from Lorenz–Mie at 550 nm: 0.82 … 0.91, limit 0.927
-    angle = np.deg2rad(np.arange(136.0, 148.0, 0.1))
-    degree = []
-    for radius, expected in ((5e-6, 0.82), (10e-6, 0.86), (20e-6, 0.88), (50e-6, 0.90)):
-        found = averages.average(Gaussian(radius, 0.08), 1.33468, 550e-9, np.cos(angle), tolerance=0.01)
-        i1, i2 = found.products[:2, 0]
-        peak = np.argmax(i1 + i2)
-        degree.append((i1[peak] - i2[peak]) / (i1[peak] + i2[peak]))
-        assert degree[-1] == pytest.approx(expected, abs=0.01)
-    assert np.all(np.diff(degree) > 0.0)
-    assert degree[-1] < 0.927

@@ -1,0 +1,382 @@
+"""Rays through crystals, one batch at a time: check → kernel → wrap.
+
+`prepare` turns a crystal, its orientation, a spectral bin and a source into kernel arguments once; `trace_plane`,
+`trace_angles` and `trace_exits` run one batch of it. A batch's bits depend on (seed, bin, batch) and what was prepared,
+nothing else; batches may run in any thread. Every batch is an independent scramble of the same Sobol points, so the scatter
+between batches is an honest error.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from skyoptics.crystals.orientations import Orientation, projected_area
+from skyoptics.crystals.shapes import Shape
+from skyoptics.errors import DomainError
+from skyoptics.kernels.binning import ANGLE_SUMS, EXIT_CODES, EXIT_COLUMNS
+from skyoptics.kernels.crystal import ANGLES, EXITS, PLANE, STOKES_PLANE, TALLIES, trace_crystals
+from skyoptics.kernels.lanes import CHUNK
+from skyoptics.kernels.orient import (
+    AZIMUTH,
+    DISC_ANGLE,
+    DISC_RADIUS,
+    ENTRY_FIRST,
+    ENTRY_SECOND,
+    SPIN,
+    TILT,
+    TILT_DIRECTION,
+    WAVELENGTH,
+)
+from skyoptics.kernels.plain import PLAIN_TALLIES, trace_plain
+from skyoptics.kernels.projection import SPARE
+from skyoptics.kernels.random import batch_key
+from skyoptics.kernels.sobol import CHUNK_TABLE, REVERSED_NUMBERS
+from skyoptics.units import ArrayLike, Float32Array, FloatArray
+
+MAXIMUM_RAYS = 2**20
+"""Largest batch."""
+
+CUTOFF = 0.05
+"""Power, relative to a mean ray, below which rays play roulette."""
+
+UNPOLARISED = (1.0, 0.0, 0.0, 0.0)
+
+_INDEX_KNOTS = 33
+_DISC_KNOTS = 513
+
+
+@dataclass(frozen=True)
+class Tally:
+    """What became of a batch; powers are sums over its rays, in units of the crystal's mean projected area.
+
+    scattered + absorbed = incident + roulette; roulette (power gained less power lost by chance) has mean 0.
+    """
+
+    rays: int
+    incident: float
+    scattered: float
+    absorbed: float
+    roulette: float
+    below_cutoff: float
+    """What a plain cut-off at the same power would have dropped."""
+    segments: int
+    """Hits from inside by live rays."""
+    cosine: float
+    """Σ power · cos(scattering angle); angle tables only."""
+    forward: float
+    """Power within 2e-5 rad of straight on (through parallel faces, at tilt of the index only); angle tables only."""
+
+    def __add__(self, other: Tally) -> Tally:
+        return Tally(*(getattr(self, name) + getattr(other, name) for name in self.__dataclass_fields__))
+
+
+@dataclass(frozen=True, eq=False)
+class Prepared:
+    """Kernel arguments of one kind of crystal in one spectral bin under one source; made by `prepare`."""
+
+    arguments: tuple[Any, ...]
+    used: int
+    spectral_bin: int
+    mean_incident: float
+    """Expected incident power of a ray: the extinction towards the source ÷ the reference."""
+
+
+@dataclass(frozen=True, eq=False)
+class ExitList:
+    """Rays that left, one row each, in the order they left.
+
+    Parameters
+    ----------
+    direction, before : ndarray, shape (m, 3)
+        Directions of travel after and before the crystal, world.
+    stokes : ndarray, shape (m, 4)
+        Power (I, Q, U, V) with e⊥ = `reference`.
+    reference : ndarray, shape (m, 3)
+        e⊥, world, any length.
+    ray, hits : ndarray, shape (m,)
+        Number of the ray in its batch; number of faces met.
+    path : ndarray, shape (m,)
+        Path code, see `skyoptics.kernels.lanes.path_faces`.
+    """
+
+    direction: Float32Array
+    before: Float32Array
+    stokes: Float32Array
+    reference: Float32Array
+    ray: Any
+    hits: Any
+    path: Any
+
+
+def prepare(
+    shape: Shape,
+    orientation: Orientation,
+    index: Callable[[FloatArray], Any],
+    edges: ArrayLike,
+    direction: ArrayLike,
+    radius: float = 0.0,
+    darkening: ArrayLike | None = None,
+    stokes: ArrayLike = UNPOLARISED,
+    size: float = 0.0,
+    spectral_bin: int = 0,
+    cutoff: float = CUTOFF,
+) -> Prepared:
+    """Return what the batches of one spectral bin have in common.
+
+    Parameters
+    ----------
+    shape, orientation : Shape, Orientation
+        The crystals.
+    index : callable
+        Wavelengths, shape (m,) [m] → refractive index relative to the air, real or n + ik.
+    edges : array_like, shape (2,)
+        Of the bin [m]; wavelengths are spread evenly over it.
+    direction : array_like, shape (3,)
+        Unit vector towards the source (viewing direction).
+    radius : float, optional
+        Of the source's disc [rad]; default a point.
+    darkening : array_like, shape (6,), optional
+        Row of `skyoptics.optics.source.Disc.darkening` of this bin; default an even disc.
+    stokes : array_like, shape (4,), optional
+        Of the source, I = 1, in its own frame of elevation (at the zenith: e⊥ = east); default unpolarised.
+    size : float, optional
+        Diameter across corners [m]; 0 for no absorption.
+    spectral_bin : int, optional
+        Number of the bin, part of the random key.
+    cutoff : float, optional
+        Power below which rays play roulette, relative to a mean ray of this batch.
+
+    Raises
+    ------
+    DomainError
+        If the index is not above 1 (or above 2), or an argument is out of range.
+    """
+    low, high = (float(edge) for edge in np.asarray(edges, dtype=np.float64))
+    wavelength = np.linspace(low, high, _INDEX_KNOTS)
+    values = np.asarray(index(wavelength), dtype=np.complex128) * np.ones(_INDEX_KNOTS)
+    if not (np.all(values.real > 1.0) and np.all(values.real <= 2.0) and np.all(values.imag >= 0.0)):
+        raise DomainError("a crystal's index relative to the air is 1 < n <= 2 with k >= 0")
+    if not (0.0 <= radius < 0.2 and size >= 0.0 and 0.0 < cutoff <= 1.0):
+        raise DomainError("disc radius is 0 to 0.2 rad, size at least 0, cut-off above 0 and at most 1")
+    index_table = np.stack([values.real, 4.0 * np.pi * values.imag / wavelength * size], axis=1).astype(np.float32)
+    towards = np.asarray(direction, dtype=np.float64)
+    if towards.shape != (3,) or abs(np.linalg.norm(towards) - 1.0) > 1e-6:
+        raise DomainError("a source's direction is a unit vector")
+    level = np.array([towards[1], -towards[0], 0.0])
+    length = float(np.linalg.norm(level))
+    level = level / length if length > 1e-9 else np.array([1.0, 0.0, 0.0])
+    frame = np.concatenate([level, np.cross(towards, level), towards])
+    reference = shape.mean_projected_area
+    mean_incident = float(projected_area(shape, orientation, towards[2]) / reference)
+    used = 1 << ENTRY_FIRST | 1 << WAVELENGTH | 1 << ENTRY_SECOND | 1 << AZIMUTH
+    if orientation.name == "random" or orientation.tilt > 0.0:
+        used |= 1 << TILT | 1 << TILT_DIRECTION
+    if orientation.name == "column":
+        used |= 1 << SPIN
+    if radius > 0.0:
+        used |= 1 << DISC_RADIUS | 1 << DISC_ANGLE
+    arguments = (
+        shape.packed_slabs(),
+        shape.packed_patches(),
+        np.float32(1.0 / reference),
+        orientation.law,
+        np.float32(orientation.inverse_kappa),
+        np.float32(orientation.span),
+        frame.astype(np.float32),
+        np.float32(radius),
+        disc_table(darkening),
+        index_table[:1].ravel() if low == high else np.concatenate([index_table, index_table[-1:]]).ravel(),
+        np.asarray(stokes, dtype=np.float32),
+        np.float32(cutoff * mean_incident),
+    )
+    return Prepared(arguments, used, spectral_bin, mean_incident)
+
+
+def trace_plane(
+    prepared: Prepared,
+    directions: Float32Array,
+    seed: int,
+    batch: int,
+    rays: int,
+    stokes_count: int = 1,
+    dtype: Any = np.float32,
+) -> tuple[Any, Tally]:
+    """Trace one batch onto a grid of directions.
+
+    Parameters
+    ----------
+    prepared : Prepared
+        From `prepare`.
+    directions : ndarray
+        `Directions.packed()`.
+    seed, batch : int
+        Together with the bin they make the random key.
+    rays : int
+        A multiple of 64, at most `MAXIMUM_RAYS`.
+    stokes_count : int, optional
+        1 for I, 4 for I, Q, U, V in the picture's frame of elevation: Q = I(vertical) − I(level), U > 0 for a field that
+        swings between upper right and lower left as the observer sees it, V as in Bohren & Huffman (1983) §2.11.
+    dtype : dtype, optional
+        float32 or float64.
+
+    Returns
+    -------
+    plane : ndarray, shape (ny, nx) or (ny, nx, 4)
+        Power sums. Divided by (2 · rays · solid angle) they are the `phase` of a scatterer [sr⁻¹]: differential scattering
+        cross-section ÷ reference extinction, twice the mean projected area.
+    tally : Tally
+        What became of the rays.
+    """
+    if stokes_count not in (1, 4):
+        raise DomainError(f"a plane holds 1 or 4 Stokes components; got {stokes_count}")
+    ny, nx = int(directions[1]), int(directions[2])
+    plane = np.zeros((ny * nx + SPARE) * stokes_count, dtype=dtype)
+    sink = PLANE if stokes_count == 1 else STOKES_PLANE
+    tally = _run(prepared, seed, batch, rays, sink, np.asarray(directions, dtype=np.float32), plane)
+    kept = plane[: ny * nx * stokes_count]
+    return kept.reshape((ny, nx) if stokes_count == 1 else (ny, nx, 4)), tally
+
+
+def trace_angles(
+    prepared: Prepared, count: int, seed: int, batch: int, rays: int, polarised: bool = True
+) -> tuple[FloatArray, Tally]:
+    """Trace one batch of randomly oriented crystals into a table over scattering angle.
+
+    Parameters
+    ----------
+    prepared : Prepared
+        Random orientation; the source's Stokes vector is not looked at.
+    count : int
+        Number of equal bins between 0 and π.
+    seed, batch, rays : int
+        As in `trace_plane`; rays a multiple of 256.
+    polarised : bool, optional
+        False: unpolarised rays only, P11 and P12 with all rays' statistics, the rest 0.
+
+    Returns
+    -------
+    sums : ndarray, shape (count, 6)
+        Sums for P11 P12 P22 P33 P34 P44; P = sums · 4π / (scattered power · solid angle of the bin), so that ∫ P11 dΩ = 4π
+        over what was traced.
+    tally : Tally
+    """
+    if rays % (4 * CHUNK):
+        raise DomainError(f"rays of an angle table are a multiple of {4 * CHUNK}; got {rays}")
+    table = np.zeros(count * ANGLE_SUMS)
+    grid = np.array([4.0 if polarised else 1.0, float(count)], dtype=np.float32)
+    tally = _run(prepared, seed, batch, rays, ANGLES, grid, table)
+    return table.reshape(count, ANGLE_SUMS), tally
+
+
+def trace_exits(
+    prepared: Prepared, seed: int, batch: int, rays: int, capacity: int | None = None
+) -> tuple[ExitList, Tally]:
+    """Trace one batch and return every exit with power, at most `capacity` (default 16 a ray) of them."""
+    capacity = 16 * rays if capacity is None else capacity
+    values = np.zeros((capacity, EXIT_COLUMNS), dtype=np.float32)
+    numbers = np.zeros((capacity, EXIT_CODES), dtype=np.uint32)
+    tally, exits = _call(prepared, seed, batch, rays, EXITS, np.zeros(2, np.float32), np.zeros(1), values, numbers)
+    if exits > capacity:
+        raise DomainError(f"{exits:.0f} exits do not fit a list of {capacity}; ask for fewer rays or more room")
+    values, numbers = values[: int(exits)], numbers[: int(exits)]
+    long = numbers[:, 1] > 12
+    path = np.where(
+        long, np.int64((1 << 60) - 1), numbers[:, 3].astype(np.int64) << 30 | numbers[:, 2].astype(np.int64)
+    )
+    return (
+        ExitList(values[:, 0:3], values[:, 10:13], values[:, 3:7], values[:, 7:10], numbers[:, 0], numbers[:, 1], path),
+        tally,
+    )
+
+
+def plain_plane(
+    prepared: Prepared, shape: Shape, directions: Float32Array, seed: int, batch: int, rays: int
+) -> tuple[FloatArray, Tally]:
+    """Trace one batch with the plain comparison loop, for tests and benchmarks.
+
+    Returns
+    -------
+    plane : ndarray, shape (ny, nx)
+        Power sums; divided by (2 · `rays` · solid angle), `rays` those shot, they are the phase as in `trace_plane`.
+    tally : Tally
+        `rays` counts those that entered: the others missed.
+    """
+    slabs, _, scale, law, inverse_kappa, span, frame, radius, disc, index, _, cutoff = prepared.arguments
+    reach = max(float(np.linalg.norm(corners, axis=1).max()) for corners in shape.faces)
+    per_ray = np.pi * reach**2 * float(scale)
+    plane = np.zeros(int(directions[1]) * int(directions[2]))
+    tally = np.zeros(PLAIN_TALLIES)
+    trace_plain(
+        slabs.astype(np.float64),
+        reach,
+        float(scale),
+        law,
+        float(inverse_kappa),
+        float(span),
+        frame.astype(np.float64),
+        float(radius),
+        disc[:-1].astype(np.float64),
+        index[: max(2, len(index) - 2)].astype(np.float64),
+        float(cutoff) / prepared.mean_incident * per_ray,
+        *batch_key(seed, prepared.spectral_bin, batch),
+        rays,
+        np.asarray(directions, dtype=np.float64),
+        plane,
+        tally,
+    )
+    _, entered, incident, scattered, absorbed, segments = (float(x) for x in tally)
+    result = Tally(int(entered), incident, scattered, absorbed, 0.0, 0.0, int(segments), 0.0, 0.0)
+    return plane.reshape(int(directions[1]), int(directions[2])), result
+
+
+def disc_table(darkening: ArrayLike | None = None) -> Float32Array:
+    """Return (ρ / radius)² at equal steps of probability, its last entry twice, for brightness Σ A_j µ^j, µ² = 1 − (ρ / radius)².
+
+    From the rim inwards the probability is G(µ) = Σ 2 A_j µ^(j+2) / (j + 2), which is inverted by interpolation.
+    """
+    a = np.array([1.0]) if darkening is None else np.asarray(darkening, dtype=np.float64)
+    square = np.linspace(0.0, 1.0, 20001) ** 2
+    mu = np.sqrt(square)
+    power = np.arange(len(a))
+    inner = (2.0 * a / (power + 2.0) * mu[:, None] ** (power + 2)).sum(axis=1)
+    if not np.all(np.diff(inner) >= 0.0) or inner[-1] <= 0.0:
+        raise DomainError("limb darkening leaves the disc negative somewhere")
+    table = np.interp(np.linspace(0.0, 1.0, _DISC_KNOTS), inner / inner[-1], 1.0 - square)
+    return np.append(table, table[-1]).astype(np.float32)
+
+
+def _run(prepared: Prepared, seed: int, batch: int, rays: int, sink: int, grid: Any, plane: Any) -> Tally:
+    return _call(prepared, seed, batch, rays, sink, grid, plane, *_NO_EXITS)[0]
+
+
+def _call(
+    prepared: Prepared,
+    seed: int,
+    batch: int,
+    rays: int,
+    sink: int,
+    grid: Any,
+    plane: Any,
+    values: Any,
+    numbers: Any,
+) -> tuple[Tally, float]:
+    """Run the kernel; return the tally and the number of exits met."""
+    if not 0 < rays <= MAXIMUM_RAYS or rays % CHUNK:
+        raise DomainError(f"rays of a batch are a multiple of {CHUNK}, at most {MAXIMUM_RAYS}; got {rays}")
+    tally = np.zeros(TALLIES)
+    key = batch_key(seed, prepared.spectral_bin, batch)
+    arguments: tuple[Any, ...] = (*prepared.arguments, *key, rays, prepared.used, REVERSED_NUMBERS, CHUNK_TABLE)
+    arguments += (sink, grid, plane, values, numbers, tally)
+    trace_crystals(*arguments)
+    entered, incident, scattered, absorbed, gain, below, segments, cosine, forward, exits = (float(x) for x in tally)
+    return (
+        Tally(int(entered), incident, scattered, absorbed, gain, below, int(segments), cosine, forward),
+        exits,
+    )
+
+
+_NO_EXITS = (np.zeros((0, EXIT_COLUMNS), dtype=np.float32), np.zeros((0, EXIT_CODES), dtype=np.uint32))
