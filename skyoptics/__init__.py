@@ -8,7 +8,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from skyoptics.render.face import Picture, load, render
+    from skyoptics.rendering.face import Picture, load, render
 
 __version__ = "0.1.0"
 __all__ = ["Picture", "__version__", "load", "render"]
@@ -17,7 +17,7 @@ __all__ = ["Picture", "__version__", "load", "render"]
 def __getattr__(name: str) -> Any:
     """Load a public name on first use."""
     if name in ("Picture", "load", "render"):
-        from skyoptics.render import face
+        from skyoptics.rendering import face
 
         return getattr(face, name)
     raise AttributeError(f"module 'skyoptics' has no attribute {name!r}; it has {', '.join(__all__)}")

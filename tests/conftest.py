@@ -26,7 +26,8 @@ height_px = 40
 wavelengths_nm = [450, 550, 650]
 """
 
-assert skyoptics.kernels.KERNEL_HASH and os.environ["NUMBA_CACHE_DIR"]
+assert skyoptics.kernels.KERNEL_HASH
+assert os.environ["NUMBA_CACHE_DIR"]
 
 
 @pytest.fixture(scope="session", autouse=True)

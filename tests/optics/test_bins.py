@@ -19,7 +19,9 @@ def test_means_against_quadrature():
         for column in range(2):
             if high > low:
                 inside = knots[(knots > low) & (knots < high)]
-                expected = quad(lambda x, c=column: np.interp(x, knots, values[:, c]), low, high, points=inside, limit=200)[0]
+                expected = quad(
+                    lambda x, c=column: np.interp(x, knots, values[:, c]), low, high, points=inside, limit=200
+                )[0]
                 assert means[row, column] == pytest.approx(expected / (high - low), rel=1e-9)
             else:
                 assert means[row, column] == pytest.approx(np.interp(low, knots, values[:, column]))

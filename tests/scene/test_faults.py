@@ -197,7 +197,10 @@ def test_one_fault_in_its_exact_words(table, lines, expected):
             AIR,
             ["s.toml: light: is missing; a scene needs a [light] table with elevation_deg, the height of the sun"],
         ),
-        (LIGHT, ['s.toml: air: is missing; a scene needs at least one [[air]] table with kind = "drops" or "crystals"']),
+        (
+            LIGHT,
+            ['s.toml: air: is missing; a scene needs at least one [[air]] table with kind = "drops" or "crystals"'],
+        ),
         (
             "air = []\n" + LIGHT,
             ['s.toml:1: air: is empty; a scene needs at least one [[air]] table with kind = "drops" or "crystals"'],
