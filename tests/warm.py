@@ -11,6 +11,11 @@ SCENE = """
 elevation_deg = 20
 [[air]]
 kind = "drops"
+[[air]]
+kind = "crystals"
+orientation = "plate"
+[[air]]
+kind = "crystals"
 [camera]
 width_px = 60
 [picture]

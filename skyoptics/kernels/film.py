@@ -10,11 +10,10 @@ from numba import njit
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def add_plane(total: Any, squares: Any, plane: Any, weight: Any) -> None:
-    """Add a plane to a sum, and its weighted square to another; all flat float32, weight float32."""
+    """Add a plane to a sum (flat float32), and its weighted square to another (flat float64); weight float64."""
     for i in range(len(plane)):
-        value = plane[i]
-        total[i] += value
-        value *= weight
+        total[i] += plane[i]
+        value = weight * np.float64(plane[i])
         squares[i] += value * value
 
 
@@ -22,7 +21,7 @@ def add_plane(total: Any, squares: Any, plane: Any, weight: Any) -> None:
 def luminance_and_variance(sums: Any, squares: Any, factor: Any, count: float, luminance: Any, variance: Any) -> None:
     """Fill mean and variance of the mean of Σ factor · sum over bins.
 
-    sums (nλ, n) and squares (n,) float32 of `count` batches of each bin, factor (nλ,) float64; luminance and variance (n,)
+    sums (nλ, n) float32 and squares (n,) float64 of `count` batches of each bin, factor (nλ,) float64; luminance and variance (n,)
     float64. Bins are independent; fewer than two batches give an infinite variance.
     """
     bands, n = sums.shape
@@ -35,5 +34,5 @@ def luminance_and_variance(sums: Any, squares: Any, factor: Any, count: float, l
             luminance[i] += value
             variance[i] += value * value
     for i in range(n):
-        spread = np.float64(squares[i]) - variance[i] * count
+        spread = squares[i] - variance[i] * count
         variance[i] = max(spread, 0.0) / (count * (count - 1.0)) if count > 1.0 else np.inf

@@ -28,7 +28,7 @@ from skyoptics.optics.source import Source
 from skyoptics.rendering.store import folder as store_folder
 from skyoptics.units import Float32Array, FloatArray
 
-FORMAT = 1
+FORMAT = 2
 MOST_STORED = 8e9
 """Films are kept up to this size together [byte]; the ones not used for longest go first."""
 
@@ -61,7 +61,7 @@ class Film:
     rays: Any
     reference: FloatArray
     sums: Float32Array
-    squares: Float32Array
+    squares: FloatArray
     counts: Any
     tally: dict[str, float] = field(default_factory=dict)
     reused: int = 0
@@ -77,14 +77,14 @@ class Film:
             np.asarray(rays),
             reference,
             np.zeros((bands, *shape), dtype=np.float32),
-            np.zeros(shape, dtype=np.float32),
+            np.zeros(shape),
             np.zeros(bands, dtype=np.int64),
         )
 
     def add(self, band: int, plane: Float32Array, tally: dict[str, float]) -> None:
         """Add the next batch of a bin."""
         self.whole = False
-        weight = np.float32(self.reference[band] / (2.0 * self.rays[band]))
+        weight = float(self.reference[band] / (2.0 * self.rays[band]))
         add_plane(self.sums[band].reshape(-1), self.squares.reshape(-1), plane.reshape(-1), weight)
         self.counts[band] += 1
         for name, value in tally.items():
