@@ -10,8 +10,8 @@ import numpy as np
 
 from skyoptics.camera.lenses import lens
 from skyoptics.errors import DomainError
-from skyoptics.geometry.axes import direction
-from skyoptics.geometry.directions import Directions
+from skyoptics.geometry.axes import azimuth_elevation, direction
+from skyoptics.geometry.directions import CYLINDRICAL, Directions
 from skyoptics.units import FloatArray
 
 
@@ -97,3 +97,34 @@ def panorama(
     return Directions.cylindrical(
         shape, rotation, (width / 2.0, -width / 2.0), (elevation + height / 2.0, elevation - height / 2.0)
     )
+
+
+def polariser(directions: Directions, angle: float, rows: slice = slice(None)) -> FloatArray:
+    """Return the position angle of a polariser's axis in front of each pixel's light.
+
+    Parameters
+    ----------
+    directions : Directions
+        From `photograph` or `panorama`.
+    angle : float
+        Of the axis on the lens, from the top of the picture, clockwise as seen from behind the camera [rad]; for a
+        panorama from the vertical.
+    rows : slice, optional
+        Only these rows.
+
+    Returns
+    -------
+    ndarray, shape (ny, nx)
+        From the direction of growing elevation, clockwise as the observer sees it [rad]. The axis is carried from the
+        middle of the picture to each pixel along the great circle between them, so axes at right angles stay so.
+    """
+    view = directions.vectors(rows)
+    if directions.kind == CYLINDRICAL:
+        return np.where(np.isnan(view[..., 0]), np.nan, angle)
+    right, up, forward = directions.rotation
+    axis = np.cos(angle) * up + np.sin(angle) * right
+    carried = axis - ((view @ axis) / (1.0 + view @ forward))[..., None] * (view + forward)
+    azimuth, elevation = azimuth_elevation(view)
+    upwards = direction(azimuth, elevation + np.pi / 2.0)
+    sideways = np.stack([np.cos(azimuth), -np.sin(azimuth), np.zeros_like(azimuth)], axis=-1)
+    return np.arctan2(np.sum(carried * sideways, axis=-1), np.sum(carried * upwards, axis=-1))

@@ -18,6 +18,9 @@ from skyoptics.cli.options import SceneFile, Word, json_option, sampling_options
     "--set", "overrides", multiple=True, metavar="TABLE.KEY=VALUE", help="Change a value, e.g. air.1.radius_um=250."
 )
 @click.option("--data", is_flag=True, help="Write the spectral radiance too, as NetCDF.")
+@click.option(
+    "--stokes", is_flag=True, help="Put degree and direction of polarisation into the data too (with --data)."
+)
 @click.option("--image", "extra", multiple=True, type=Word(["exr", "tiff"]), help="Write a linear float image too.")
 @click.option("--dry-run", is_flag=True, help="Say what it would take: rays, memory, time, files.")
 @click.option("--rays", type=click.IntRange(1), help="Rays of each kind of particle; overrides --quality.")
@@ -37,6 +40,7 @@ def command(
     rays: int | None,
     processes: int,
     noise_map: bool,
+    stokes: bool,
     as_json: bool,
     quality: str,
     seed: int,
@@ -65,7 +69,7 @@ def command(
     progress.note_first_compilation()
     words = _command(scene, overrides, wanted, settings)
     with progress.shown() as tell:
-        result = render(described, str(scene), settings, tell, data, wanted.preview)
+        result = render(described, str(scene), settings, tell, data, wanted.preview, stokes)
     files = output.write(result, described, wanted, words)
     for caution in result.report["cautions"]:
         click.echo(f"caution: {caution}", err=True)

@@ -91,7 +91,7 @@ def adaptation(white: ArrayLike, display: ArrayLike = WHITE) -> FloatArray:
     """
     white = np.asarray(white, dtype=np.float64)
     if not white[1] > 0.0 or not np.all(BRADFORD @ white > 0.0):
-        raise DomainError("a white to adapt to needs light in every part of the spectrum; choose white = \"display\"")
+        raise DomainError('a white to adapt to needs light in every part of the spectrum; choose white = "display"')
     gain = (BRADFORD @ np.asarray(display, dtype=np.float64)) / (BRADFORD @ (white / white[1]))
     result: FloatArray = np.linalg.inv(BRADFORD) @ (gain[:, None] * BRADFORD)
     return result

@@ -20,12 +20,16 @@ from skyoptics.errors import DataFileError, DomainError, nearest
 from skyoptics.optics.bins import Bins
 from skyoptics.units import NM, ArrayLike, FloatArray
 
-Observer: TypeAlias = Literal["1931", "1964"]
+Observer: TypeAlias = Literal["1931", "1964", "scotopic"]
 
 LUMINOUS_EFFICACY = 683.002
 """K_m [lm W⁻¹]: 683 lm W⁻¹ at 540 THz, moved to the peak of the tabulated curve (CIE 15)."""
-OBSERVERS = ("1931", "1964")
-"""CIE 1931 2° and CIE 1964 10°."""
+SCOTOPIC_EFFICACY = 1700.06
+"""K'_m of the dark-adapted eye [lm W⁻¹] (CIE 1951; ISO 23539)."""
+NIGHT_CHROMATICITY = (0.28, 0.29)
+"""x, y given to the dark-adapted eye, which sees no colours: a slightly bluish grey (common practice, no source)."""
+OBSERVERS = ("1931", "1964", "scotopic")
+"""CIE 1931 2°, CIE 1964 10°, and the dark-adapted eye: V'(λ) of CIE 1951 in one colour."""
 
 _FILE = Path(__file__).with_name("observers.npz")
 
@@ -35,8 +39,9 @@ def matching_functions(observer: Observer = "1931") -> tuple[FloatArray, FloatAr
 
     Parameters
     ----------
-    observer : {"1931", "1964"}
-        CIE 1931 2° or CIE 1964 10°.
+    observer : {"1931", "1964", "scotopic"}
+        CIE 1931 2°, CIE 1964 10°, or V'(λ) times the tristimulus values of `NIGHT_CHROMATICITY`, scaled so that Y comes out
+        as scotopic luminance.
 
     Returns
     -------
@@ -54,7 +59,7 @@ def matching_functions(observer: Observer = "1931") -> tuple[FloatArray, FloatAr
     """
     if observer not in OBSERVERS:
         hint = nearest(str(observer), OBSERVERS)
-        raise DomainError(f"observer is {observer!r}, allowed are {' and '.join(OBSERVERS)}{hint}")
+        raise DomainError(f"observer is {observer!r}, allowed are {', '.join(OBSERVERS)}{hint}")
     tables = _tables()
     return tables["wavelength"], tables[observer]
 
@@ -66,8 +71,8 @@ def weights(bins: Bins, observer: Observer = "1931", light: tuple[ArrayLike, Arr
     ----------
     bins : Bins
         The nλ spectral bins.
-    observer : {"1931", "1964"}
-        CIE 1931 2° or CIE 1964 10°.
+    observer : {"1931", "1964", "scotopic"}
+        As for `matching_functions`.
     light : (wavelength, values), optional
         Spectrum of the light, shapes (m,) [m] and (m,) [any unit], straight lines between its samples, 0 outside them.
         With it, radiance proportional to the light inside each bin gives the XYZ of the fine spectrum, however wide the
@@ -133,6 +138,9 @@ def _tables() -> dict[str, FloatArray]:
         with np.load(_FILE) as file:
             tables = {observer: file[f"cie_{observer}"] for observer in OBSERVERS}
             tables["wavelength"] = file["wavelength_nm"] * NM
+        x, y = NIGHT_CHROMATICITY
+        night = np.array([x / y, 1.0, (1.0 - x - y) / y]) * (SCOTOPIC_EFFICACY / LUMINOUS_EFFICACY)
+        tables["scotopic"] = tables["scotopic"][:, None] * night
     except (OSError, KeyError, ValueError) as error:
         raise DataFileError(f"{_FILE.name}: cannot be read ({error}); install skyoptics again") from error
     for table in tables.values():

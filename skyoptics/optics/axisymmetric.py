@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from skyoptics.geometry.axes import angle_between
 from skyoptics.geometry.directions import Directions
+from skyoptics.optics.polarisation import plane_angle
 from skyoptics.optics.source import Disc, Source
 from skyoptics.optics.table import ScatteringTable
 from skyoptics.units import FloatArray
@@ -76,36 +78,69 @@ class Axisymmetric:
     table: ScatteringTable
     share: FloatArray
 
-    def phase(self, source: Source, directions: Directions, rows: slice = slice(None)) -> FloatArray:
+    def phase(
+        self, source: Source, directions: Directions, rows: slice = slice(None), stokes: bool = False
+    ) -> FloatArray:
         """Return differential scattering cross-section ÷ reference extinction cross-section.
 
         Parameters
         ----------
         source : Source
-            Its direction is used here; its disc is in the table.
+            Its direction and polarisation are used here; its disc is in the table.
         directions : Directions
             Grid.
         rows : slice, optional
             Only these rows.
+        stokes : bool, optional
+            Whether all four Stokes components are wanted.
 
         Returns
         -------
-        ndarray, shape (ny, nx, nλ)
-            [sr⁻¹]; nan outside the image. A table of bins is averaged over each pixel's own width in scattering angle, so
-            that a caustic narrower than a pixel keeps its light; a table of nodes is read at the pixel's centre.
+        ndarray, shape (ny, nx, nλ) or (ny, nx, nλ, 4)
+            [sr⁻¹]; nan outside the image. Q and U in the meridian frame of each direction. A table of bins is averaged over
+            each pixel's own width in scattering angle, so that a caustic narrower than a pixel keeps its light; a table of
+            nodes is read at the pixel's centre.
         """
-        theta = angle_between(source.direction, directions.vectors(rows))
-        curve = self.table.elements[..., 0].sum(axis=0) * (self.share / (4.0 * np.pi))
-        if self.table.edges is None:
-            return _interpolate(theta, self.table.angle, curve)
-        half = 0.5 * directions.pixel_size(rows)
+        view = directions.vectors(rows)
+        theta = angle_between(source.direction, view)
+        half = 0.5 * directions.pixel_size(rows) if self.table.edges is not None else None
+        polarised = bool(np.any(source.stokes[:, 1:]))
+        if not polarised and not stokes:
+            return self._look_up(theta, half, (0,))[0]
+        p11, p12, p22, p33, p34, p44 = self._look_up(theta, half, range(6))
+        turn = 2.0 * plane_angle(source.direction, view)[..., None]
+        _, q, u, v = source.stokes.T
+        q, u = q * np.cos(turn) + u * np.sin(turn), u * np.cos(turn) - q * np.sin(turn)
+        intensity = p11 + p12 * q
+        if not stokes:
+            return intensity
+        along, across = p12 + p22 * q, p33 * u + p34 * v
+        turn = 2.0 * plane_angle(view, source.direction)[..., None]
+        return np.stack(
+            [
+                intensity,
+                along * np.cos(turn) - across * np.sin(turn),
+                along * np.sin(turn) + across * np.cos(turn),
+                p44 * v - p34 * u,
+            ],
+            axis=-1,
+        )
+
+    def _look_up(self, theta: FloatArray, half: FloatArray | None, columns: Sequence[int]) -> list[FloatArray]:
+        """Return elements at scattering angles, each (…, nλ) [sr⁻¹]; means over θ ± half for a table of bins."""
+        curves = self.table.elements.sum(axis=0) * (self.share / (4.0 * np.pi))[:, None]
+        if self.table.edges is None or half is None:
+            return [_interpolate(theta, self.table.angle, curves[..., column]) for column in columns]
         cosine = np.cos(self.table.edges)
-        running = np.zeros((len(cosine), curve.shape[1]))
-        np.cumsum(curve * -np.diff(cosine)[:, None], axis=0, out=running[1:])
         near = np.cos(np.clip(theta - half, 0.0, np.pi))
         far = np.cos(np.clip(theta + half, 0.0, np.pi))
-        gain = _interpolate(-far, -cosine, running) - _interpolate(-near, -cosine, running)
-        return gain / (near - far)[..., None]
+        found = []
+        for column in columns:
+            running = np.zeros((len(cosine), curves.shape[1]))
+            np.cumsum(curves[..., column] * -np.diff(cosine)[:, None], axis=0, out=running[1:])
+            gain = _interpolate(-far, -cosine, running) - _interpolate(-near, -cosine, running)
+            found.append(gain / (near - far)[..., None])
+        return found
 
     def extinction(self, cos_zenith: FloatArray) -> FloatArray:
         """Return extinction towards directions ÷ reference, shape (…, nλ): 1 for a scatterer without orientation."""

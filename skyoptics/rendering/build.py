@@ -19,15 +19,17 @@ from skyoptics.errors import DataFileError, DomainError, Fault, SceneError
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.geometry.directions import Directions
 from skyoptics.light.air import Air
+from skyoptics.light.mirror import in_water
+from skyoptics.light.moon import moon
 from skyoptics.light.sun import sun
 from skyoptics.materials import index as material
 from skyoptics.optics.bins import Bins
 from skyoptics.optics.source import Source
-from skyoptics.scene.model import Light, Scene
+from skyoptics.scene.model import Scene
 from skyoptics.scene.particles import Crystals, Drops
 from skyoptics.sky.amount import curtain, layer
 from skyoptics.sky.compose import Background
-from skyoptics.units import NM, FloatArray
+from skyoptics.units import CELSIUS_ZERO, NM, FloatArray
 
 DEFAULT_EDGES_NM = (380.0, 400.0, 415.0, *np.arange(430.0, 681.0, 10.0).tolist(), 695.0, 715.0, 740.0, 780.0)
 """Edges of the default bins [nm]: 10 nm where the eye sees well, wider at the ends."""
@@ -103,6 +105,10 @@ class Job:
         The picture's pixels.
     background : Background
         What lies behind.
+    polariser : float or None
+        Axis of a polariser on the lens, from the top of the picture, clockwise from behind the camera [rad].
+    stokes : bool
+        Whether all four Stokes components are wanted.
     """
 
     bins: Bins
@@ -110,9 +116,11 @@ class Job:
     sheets: tuple[DropSheet | CrystalSheet, ...]
     directions: Directions
     background: Background
+    polariser: float | None = None
+    stokes: bool = False
 
 
-def build(scene: Scene, where: str) -> Job:
+def build(scene: Scene, where: str, stokes: bool = False) -> Job:
     """Return the physics of a scene.
 
     Parameters
@@ -121,6 +129,8 @@ def build(scene: Scene, where: str) -> Job:
         Checked description.
     where : str
         Name of its file, for faults.
+    stokes : bool
+        Whether all four Stokes components will be asked for; a polariser asks for them anyway.
 
     Returns
     -------
@@ -133,7 +143,7 @@ def build(scene: Scene, where: str) -> Job:
     """
     bins = spectral_bins(scene)
     with _blame(where, "light"):
-        source = _sun(scene.light, bins)
+        sources = _sources(scene, bins)
     sheets: list[DropSheet | CrystalSheet] = []
     for number, particles in enumerate(scene.air, start=1):
         with _blame(where, f"air.{number}"):
@@ -147,8 +157,16 @@ def build(scene: Scene, where: str) -> Job:
                 orientation = Orientation(particles.orientation, particles.tilt)
                 sheets.append(CrystalSheet(name, index, shape, orientation, particles.diameter, _amount(particles)))
     with _blame(where, "camera"):
-        directions = _directions(scene, source)
-    return Job(bins, (source,), tuple(sheets), directions, Background(scene.picture.background, scene.picture.ground))
+        directions = _directions(scene, sources[0])
+    return Job(
+        bins,
+        sources,
+        tuple(sheets),
+        directions,
+        Background(scene.picture.background, scene.picture.ground),
+        scene.camera.polariser,
+        stokes or scene.camera.polariser is not None,
+    )
 
 
 def spectral_bins(scene: Scene) -> Bins:
@@ -164,7 +182,8 @@ def spectral_bins(scene: Scene) -> Bins:
     return Bins.adjoining(np.array(DEFAULT_EDGES_NM) * NM)
 
 
-def _sun(light: Light, bins: Bins) -> Source:
+def _sources(scene: Scene, bins: Bins) -> tuple[Source, ...]:
+    light = scene.light
     air = None
     if light.attenuation == "air":
         air = Air(
@@ -173,7 +192,15 @@ def _sun(light: Light, bins: Bins) -> Source:
             aerosol_depth_550=light.aerosol_depth,
             aerosol_exponent=light.aerosol_exponent,
         )
-    return sun(light.elevation, light.azimuth, bins, air, disc=light.disc == "sun")
+    disc = light.disc != "point"
+    if light.body == "moon":
+        first = moon(light.elevation, light.azimuth, light.phase_angle, bins, air, disc)
+    else:
+        first = sun(light.elevation, light.azimuth, bins, air, disc)
+    if not light.mirrored:
+        return (first,)
+    water = material.water(CELSIUS_ZERO + 10.0, scene.medium.kind)(bins.edges.ravel()).real.reshape(-1, 2).mean(axis=1)
+    return first, in_water(first, water)
 
 
 def _index(particles: Drops | Crystals, medium: str) -> material.RefractiveIndex:

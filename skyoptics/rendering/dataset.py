@@ -10,7 +10,9 @@ import numpy as np
 
 from skyoptics.colour.images import replacing
 from skyoptics.geometry.axes import azimuth_elevation
-from skyoptics.rendering.run import Result, look
+from skyoptics.optics.polarisation import degree_of_linear_polarisation
+from skyoptics.rendering.run import Result, blocks, look
+from skyoptics.sky.compose import stokes
 from skyoptics.units import DEG, NM
 
 if TYPE_CHECKING:
@@ -37,6 +39,25 @@ def dataset(result: Result, attributes: Mapping[str, str]) -> xarray.Dataset:
 
     job = result.job
     values = np.empty((*job.directions.shape, len(job.bins)), dtype=np.float32)
+    polarisation: dict[str, Any] = {}
+    if job.stokes:
+        degree, angle = np.empty_like(values), np.empty_like(values)
+        for rows in blocks(job.directions.shape):
+            seen = stokes(job.directions, rows, job.sources, result.sheets, job.background)
+            degree[rows] = degree_of_linear_polarisation(seen)
+            angle[rows] = 0.5 * np.arctan2(seen[..., 2], seen[..., 1]) / DEG
+        polarisation = {
+            "degree_of_polarisation": (
+                ("y", "x", "wavelength"),
+                degree,
+                {"long_name": "degree of linear polarisation, without a polariser", "units": "1"},
+            ),
+            "polarisation_angle": (
+                ("y", "x", "wavelength"),
+                angle,
+                {"long_name": "plane of the electric vector from growing elevation, clockwise", "units": "degree"},
+            ),
+        }
     azimuth = np.empty(job.directions.shape)
     elevation = np.empty(job.directions.shape)
     for rows, block in look(job, result.sheets, None):
@@ -50,6 +71,7 @@ def dataset(result: Result, attributes: Mapping[str, str]) -> xarray.Dataset:
                 {"long_name": "spectral radiance, mean over the bin", "units": "W m-2 sr-1 nm-1"},
             ),
             "wavelength_bounds": (("wavelength", "edge"), job.bins.edges / NM, {"units": "nm"}),
+            **polarisation,
         },
         coords={
             "azimuth": (("y", "x"), azimuth / DEG, {"long_name": "azimuth, clockwise from north", "units": "degree"}),
@@ -72,6 +94,8 @@ def dataset(result: Result, attributes: Mapping[str, str]) -> xarray.Dataset:
 def write(data: xarray.Dataset, path: Path) -> None:
     """Write a dataset as compressed NetCDF-4, whole or not at all."""
     encoding: dict[str, dict[str, Any]] = {str(name): {"_FillValue": None} for name in data.variables}
-    encoding["radiance"].update(zlib=True, complevel=1, shuffle=True)
+    for name in ("radiance", "degree_of_polarisation", "polarisation_angle"):
+        if name in encoding:
+            encoding[name].update(zlib=True, complevel=1, shuffle=True)
     with replacing(path) as aside:
         data.to_netcdf(aside, engine="h5netcdf", encoding=encoding)

@@ -26,6 +26,7 @@ from skyoptics.kernels import KERNEL_HASH
 from skyoptics.light import spectrum
 from skyoptics.optics.batches import in_order
 from skyoptics.optics.bins import Bins
+from skyoptics.optics.source import Source
 from skyoptics.rendering import film as films
 from skyoptics.rendering.build import CrystalSheet, Job
 from skyoptics.rendering.film import Film, FilmScatterer
@@ -49,6 +50,7 @@ class Work:
     """A film with all that its batches need."""
 
     sheet: CrystalSheet
+    source: Source
     film: Film
     prepared: tuple[Prepared, ...]
     packed: Float32Array
@@ -62,7 +64,10 @@ class Work:
         `pause` is called after each batch, where stopping is safe.
         """
         missing = list(self.film.missing(rounds))
-        tasks = ((self.prepared[band], self.packed, self.seed, k, int(self.film.rays[band])) for band, k in missing)
+        stokes = 4 if self.film.sums.ndim == 4 else 1
+        tasks = (
+            (self.prepared[band], self.packed, self.seed, k, int(self.film.rays[band]), stokes) for band, k in missing
+        )
         ahead = 2 * getattr(executor, "_max_workers", 2)
         for (band, k), (plane, tally) in zip(missing, in_order(_batch, tasks, executor, ahead), strict=True):
             self.film.add(band, plane, tally)
@@ -101,9 +106,21 @@ def rays_by_bin(bins: Bins, pixels: int) -> Any:
     return (np.maximum(np.round(batch * share / 256.0), 1) * 256).astype(np.int64)
 
 
-def begin(sheet: CrystalSheet, job: Job, seed: int) -> Work:
-    """Return the film of a sheet of crystals, from the store where it is there, and what its batches need."""
-    source, bins, grid = job.sources[0], job.bins, job.directions
+def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None) -> Work:
+    """Return the film of a sheet of crystals, from the store where it is there, and what its batches need.
+
+    Parameters
+    ----------
+    sheet : CrystalSheet
+        Crystals that stand in some way.
+    job : Job
+        Grid and bins; with `job.stokes` the film holds all four Stokes components.
+    seed : int
+        Of the random numbers.
+    source : Source, optional
+        What lights them; default the first of the job.
+    """
+    source, bins, grid = source or job.sources[0], job.bins, job.directions
     packed = grid.packed()
     rays = rays_by_bin(bins, grid.shape[0] * grid.shape[1])
     key = trace_key(
@@ -115,6 +132,7 @@ def begin(sheet: CrystalSheet, job: Job, seed: int) -> Work:
         source=source.direction,
         disc=np.append(source.disc.darkening.ravel(), source.disc.radius),
         directions=packed,
+        stokes=np.append(source.stokes.ravel(), float(job.stokes)),
         bins=bins.edges,
         rays=rays,
         seed=seed,
@@ -130,12 +148,14 @@ def begin(sheet: CrystalSheet, job: Job, seed: int) -> Work:
             source.direction,
             radius=source.disc.radius,
             darkening=source.disc.darkening[row],
+            stokes=source.stokes[row],
             size=sheet.diameter,
             spectral_bin=row,
         )
         for row, edges in enumerate(bins.edges)
     )
-    return Work(sheet, films.find(Film.blank(key, rays, reference, grid.shape)), prepared, packed, seed)
+    blank = Film.blank(key, rays, reference, (*grid.shape, 4) if job.stokes else grid.shape)
+    return Work(sheet, source, films.find(blank), prepared, packed, seed)
 
 
 def trace(
@@ -240,13 +260,13 @@ def lightness_error(
     scale = exposure_scale(exposure_ev)
     _, elevation = azimuth_elevation(job.directions.vectors())
     solid = job.directions.solid_angle()
-    shown = weights(job.bins)[:, 1] * job.sources[0].irradiance
+    eye = weights(job.bins)[:, 1] * (1.0 if job.polariser is None else 0.5)
     inside = np.isfinite(luminance)
     here = scale * np.nan_to_num(luminance.astype(np.float64))
     errors = []
     films_light = np.zeros(luminance.shape)
     for work in works:
-        ratio = scale * float(shown.sum() / work.film.reference.sum())
+        ratio = scale * float((eye * work.source.irradiance).sum() / work.film.reference.sum())
         amount = np.divide(
             work.sheet.amount(np.nan_to_num(elevation)) * ratio, solid, out=np.zeros_like(solid), where=solid > 0.0
         )
@@ -266,8 +286,8 @@ def _lightness(level: FloatArray) -> FloatArray:
 
 
 def _batch(
-    prepared: Prepared, packed: Float32Array, seed: int, k: int, rays: int
+    prepared: Prepared, packed: Float32Array, seed: int, k: int, rays: int, stokes: int
 ) -> tuple[Float32Array, dict[str, float]]:
-    plane, tally = trace_plane(prepared, packed, seed, k, rays)
+    plane, tally = trace_plane(prepared, packed, seed, k, rays, stokes)
     names = ("incident", "scattered", "absorbed", "roulette", "below_cutoff", "segments")
     return plane, {name: float(getattr(tally, name)) for name in names}

@@ -22,6 +22,7 @@ from uuid import uuid4
 
 import numpy as np
 
+from skyoptics.errors import DomainError
 from skyoptics.geometry.directions import Directions
 from skyoptics.kernels.film import add_plane, luminance_and_variance
 from skyoptics.optics.source import Source
@@ -45,8 +46,8 @@ class Film:
         Rays of a batch of each bin.
     reference : ndarray, shape (nλ,)
         Weights of the luminance whose error is kept.
-    sums : ndarray, shape (nλ, ny, nx)
-        Power of all batches.
+    sums : ndarray, shape (nλ, ny, nx) or (nλ, ny, nx, 4)
+        Power of all batches, or its Stokes vector.
     squares : ndarray, shape (ny, nx)
         Σ over batches of (reference · power ÷ 2 rays)².
     counts : ndarray, shape (nλ,)
@@ -69,7 +70,7 @@ class Film:
     """False while a batch is half added."""
 
     @classmethod
-    def blank(cls, key: str, rays: Any, reference: FloatArray, shape: tuple[int, int]) -> Film:
+    def blank(cls, key: str, rays: Any, reference: FloatArray, shape: tuple[int, ...]) -> Film:
         """Return a film without light."""
         bands = len(rays)
         return cls(
@@ -77,7 +78,7 @@ class Film:
             np.asarray(rays),
             reference,
             np.zeros((bands, *shape), dtype=np.float32),
-            np.zeros(shape),
+            np.zeros(shape[:2]),
             np.zeros(bands, dtype=np.int64),
         )
 
@@ -85,7 +86,8 @@ class Film:
         """Add the next batch of a bin."""
         self.whole = False
         weight = float(self.reference[band] / (2.0 * self.rays[band]))
-        add_plane(self.sums[band].reshape(-1), self.squares.reshape(-1), plane.reshape(-1), weight)
+        stride = self.sums[band].size // self.squares.size
+        add_plane(self.sums[band].reshape(-1), self.squares.reshape(-1), plane.reshape(-1), weight, stride)
         self.counts[band] += 1
         for name, value in tally.items():
             self.tally[name] = self.tally.get(name, 0.0) + value
@@ -117,7 +119,7 @@ class Film:
         shape = self.squares.shape
         luminance, variance = np.empty(shape), np.empty(shape)
         luminance_and_variance(
-            self.sums.reshape(len(self.rays), -1),
+            self.sums.reshape(len(self.rays), -1, self.sums[0].size // self.squares.size),
             self.squares.reshape(-1),
             self.reference * self.scale(),
             float(self.counts.mean()) if self.rounds > 1 else 1.0,
@@ -134,17 +136,24 @@ class FilmScatterer:
     film: Film
     extinction_towards: Callable[[FloatArray], FloatArray]
 
-    def phase(self, source: Source, directions: Directions, rows: slice = slice(None)) -> FloatArray:
-        """Return differential scattering ÷ reference extinction cross-section, shape (ny, nx, nλ) [sr⁻¹].
+    def phase(
+        self, source: Source, directions: Directions, rows: slice = slice(None), stokes: bool = False
+    ) -> FloatArray:
+        """Return differential scattering ÷ reference extinction cross-section, (ny, nx, nλ[, 4]) [sr⁻¹].
 
         The source and the grid must be those that the film was traced for. Pixels cut by the rim of the image, which have
         no solid angle, hold no light.
         """
         solid = directions.solid_angle(rows)
         factor = np.divide(1.0, solid, out=np.zeros_like(solid), where=solid > 0.0)
-        light = np.moveaxis(self.film.sums[:, rows], 0, 2).astype(np.float64)
-        light *= self.film.scale()
-        light *= factor[..., None]
+        sums = self.film.sums[:, rows]
+        if stokes and sums.ndim == 3:
+            raise DomainError("this film holds no polarisation")
+        if sums.ndim == 4 and not stokes:
+            sums = sums[..., 0]
+        light = np.moveaxis(sums, 0, 2).astype(np.float64)
+        scale = self.film.scale() * factor[..., None]
+        light *= scale[..., None] if stokes else scale
         return light
 
     def extinction(self, cos_zenith: FloatArray) -> FloatArray:

@@ -34,9 +34,11 @@ def predict(job: Job, threads: int, data: bool) -> int:
     picture = pixels * (12 + 12 + 8)  # XYZ and linear RGB in float32, encoded lines
     radiance = pixels * (4 * bands + 2 * 8) * 2 if data else 0  # the writer copies what it compresses
     blocks = threads * max(BLOCK, columns) * bands * 8 * 7
-    planes = films * pixels * 4 * (bands + 1)
+    components = 4 if job.stokes else 1
+    planes = films * len(job.sources) * pixels * (4 * bands * components + 8)
+    blocks *= components
     noise = pixels * 8 * 10 if films else 0
-    flying = 3 * threads * pixels * 4 if films else 0
+    flying = 3 * threads * pixels * 4 * components if films else 0
     return int(_PROGRAM + (len(job.sheets) - films) * _TABLE + picture + radiance + blocks + planes + noise + flying)
 
 

@@ -14,6 +14,7 @@ from typing import Any
 import numpy as np
 
 import skyoptics
+from skyoptics.camera.frame import polariser
 from skyoptics.colour.develop import Developed, develop
 from skyoptics.colour.observer import weights
 from skyoptics.rendering import expose, memory
@@ -124,7 +125,8 @@ def look(
     shape = job.directions.shape
 
     def work(rows: slice) -> FloatArray:
-        return radiance(job.directions, rows, job.sources, sheets, job.background)
+        axis = None if job.polariser is None else polariser(job.directions, job.polariser, rows)
+        return radiance(job.directions, rows, job.sources, sheets, job.background, axis)
 
     parts = list(blocks(shape))
     if executor is None:
@@ -149,6 +151,7 @@ def render(
     progress: Progress = silent,
     data: bool = False,
     preview: Callable[[Developed], None] | None = None,
+    stokes: bool = False,
 ) -> Result:
     """Render a scene.
 
@@ -166,6 +169,8 @@ def render(
         Whether the whole radiance will be asked for; counts towards memory.
     preview : callable, optional
         Given a developed picture after the first round of a long job.
+    stokes : bool
+        Whether polarisation will be asked for; a film then holds four times as much.
 
     Returns
     -------
@@ -179,7 +184,7 @@ def render(
         If it would take too much memory.
     """
     start = time.perf_counter()
-    job = build(scene, where)
+    job = build(scene, where, stokes)
     memory.check(memory.predict(job, settings.threads, data))
     picture = scene.picture
     white = job.sources[0].irradiance @ weights(job.bins, picture.observer) if picture.white == "light" else None
@@ -242,18 +247,19 @@ def _scatter(
 ) -> tuple[list[Sheet], list[Traced], list[expose.Work]]:
     """Return the sheets, how their tables were come by, and the films that are still to be traced."""
     sheets, traced, works = [], [], []
-    scatterer: Scatterer
+    scatterers: tuple[Scatterer, ...]
     for sheet in job.sheets:
         if is_table(sheet):
             table, how = find_table(sheet, job, sampling, executor, progress)
-            scatterer = axisymmetric(sheet, table, job.sources[0].disc)
+            first = axisymmetric(sheet, table, job.sources[0].disc)
+            scatterers = tuple(first for _ in job.sources)  # a mirror image has the same disc
             traced.append(how)
         else:
             assert isinstance(sheet, CrystalSheet)
-            work = expose.begin(sheet, job, sampling.seed)
-            scatterer = work.scatterer()
-            works.append(work)
-        sheets.append(Sheet(sheet.name, scatterer, sheet.amount))
+            films = [expose.begin(sheet, job, sampling.seed, source) for source in job.sources]
+            scatterers = tuple(work.scatterer() for work in films)
+            works += films
+        sheets.append(Sheet(sheet.name, scatterers, sheet.amount))
     return sheets, traced, works
 
 

@@ -30,7 +30,15 @@ RECTILINEAR_LIMIT_DEG = 80.0
 
 
 class Light(Table):
-    """The sun, and what the air takes out of its light."""
+    """The sun or the moon, and what the air takes out of its light."""
+
+    body: Annotated[Literal["sun", "moon"], note("What shines")] = "sun"
+    phase_angle_deg: Annotated[
+        float, number(0, 150, "degrees", "The moon's phase angle: 0 full, 90 half; not for the sun")
+    ] = 0.0
+    mirrored: Annotated[
+        bool, note("Whether calm water adds the light of its mirror image, from as far below the horizon")
+    ] = False
 
     elevation_deg: Annotated[float, number(-1, 90, "degrees", "Height of the sun's centre above the horizon")]
     azimuth_deg: Annotated[
@@ -63,6 +71,17 @@ class Light(Table):
     def pressure(self) -> float:
         """Air pressure [Pa]."""
         return self.pressure_hpa * HPA
+
+    @property
+    def phase_angle(self) -> float:
+        """Phase angle of the moon [rad]."""
+        return self.phase_angle_deg * DEG
+
+    @classmethod
+    def conflicts(cls, values: Mapping[str, Any]) -> Iterator[Conflict]:
+        """Yield a mirror image of what is below the horizon."""
+        if values.get("mirrored") is True and values.get("elevation_deg", 1.0) <= 0.0:
+            yield "mirrored", "water mirrors what stands above the horizon; take light.elevation_deg above 0"
 
 
 class Medium(Table):
@@ -140,11 +159,25 @@ class Camera(Table):
         float | None,
         number(0, 180, "degrees", "Height of a panorama, in elevation", above=True, default=PANORAMA_DEG[1]),
     ] = None
+    polariser_deg: Annotated[
+        float | None,
+        number(
+            -360,
+            360,
+            "degrees",
+            "Axis of a polariser, from the top of the picture, clockwise from behind; none without it",
+        ),
+    ] = None
     aim: Annotated[
         _Word | Annotated[Aim, Tag("table")],
         Discriminator(lambda value: "table" if isinstance(value, dict | Aim) else "word"),
         note("What the picture's centre looks at: the sun, the point opposite it, or a direction"),
     ] = "antisolar"
+
+    @property
+    def polariser(self) -> float | None:
+        """Axis of the polariser [rad]; None for none."""
+        return None if self.polariser_deg is None else self.polariser_deg * DEG
 
     @property
     def focal(self) -> float:
@@ -252,7 +285,10 @@ class Picture(Table):
         ),
     ] = "display"
     observer: Annotated[
-        Literal["1931", "1964"], note("CIE standard observer: 1931 (2 degrees) or 1964 (10 degrees)")
+        Literal["1931", "1964", "scotopic"],
+        note(
+            "CIE standard observer: 1931 (2 degrees), 1964 (10 degrees), or scotopic: the dark-adapted eye, without colours"
+        ),
     ] = "1931"
     depth_bits: Annotated[Literal[8, 16], note("Bits per channel of the picture file", unit="bits")] = 8
 

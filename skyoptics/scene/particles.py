@@ -98,9 +98,9 @@ class Crystals(Particles):
     aspect: Annotated[
         float, number(0.01, 100, "", "Length along the c-axis divided by the diameter across corners; below 1 a plate")
     ] = 1.0
-    diameter_um: Annotated[
-        float, number(10, 10000, "µm", "Diameter across corners; matters for absorption alone")
-    ] = 100.0
+    diameter_um: Annotated[float, number(10, 10000, "µm", "Diameter across corners; matters for absorption alone")] = (
+        100.0
+    )
     orientation: Annotated[
         Literal["random", "plate", "column", "parry"],
         note(
@@ -110,7 +110,9 @@ class Crystals(Particles):
     ] = "random"
     tilt_deg: Annotated[
         float,
-        number(0, 90, "degrees", "Standard deviation of each of the two components of tilt; not for random orientation"),
+        number(
+            0, 90, "degrees", "Standard deviation of each of the two components of tilt; not for random orientation"
+        ),
     ] = 1.0
     index: Annotated[
         float | None, number(1.0001, 2, "", "Refractive index, one for all wavelengths, instead of that of ice")

@@ -26,8 +26,8 @@ THIN = 0.2
 class Scatterer(Protocol):
     """What answers how much light goes where; see `skyoptics.optics.axisymmetric`."""
 
-    def phase(self, source: Source, directions: Directions, rows: slice) -> FloatArray:
-        """Return differential scattering ÷ reference extinction cross-section, shape (ny, nx, nλ) [sr⁻¹]."""
+    def phase(self, source: Source, directions: Directions, rows: slice, stokes: bool = False) -> FloatArray:
+        """Return differential scattering ÷ reference extinction cross-section, (ny, nx, nλ[, 4]) [sr⁻¹]."""
 
     def extinction(self, cos_zenith: FloatArray) -> FloatArray:
         """Return extinction towards a direction ÷ reference, shape (…, nλ)."""
@@ -41,14 +41,14 @@ class Sheet:
     ----------
     name : str
         For reports.
-    scatterer : Scatterer
-        What they do to light.
+    scatterers : tuple of Scatterer
+        What they do to the light of each source.
     amount : callable
         Elevation of the line of sight [rad] → path integral of the reference extinction [1].
     """
 
     name: str
-    scatterer: Scatterer
+    scatterers: tuple[Scatterer, ...]
     amount: Callable[[FloatArray], FloatArray]
 
 
@@ -71,6 +71,7 @@ def radiance(
     sources: Sequence[Source],
     sheets: Sequence[Sheet],
     background: Background,
+    polariser: FloatArray | None = None,
 ) -> FloatArray:
     """Return the spectral radiance of some rows of a grid.
 
@@ -81,9 +82,11 @@ def radiance(
     rows : slice
         Which rows.
     sources, sheets : sequence
-        What shines and what scatters; at least one source.
+        What shines and what scatters; at least one source. Each sheet has a scatterer for each source.
     background : Background
-        What lies behind.
+        What lies behind, unpolarised.
+    polariser : ndarray, shape (ny, nx), optional
+        Position angle of the axis of an ideal linear polariser in front of each direction's light [rad].
 
     Returns
     -------
@@ -91,12 +94,32 @@ def radiance(
         Bin means [W m⁻² sr⁻¹ nm⁻¹]; nan outside the image.
     """
     _, elevation = azimuth_elevation(directions.vectors(rows))
-    total = np.repeat(background.at(elevation)[..., None], len(sources[0].irradiance), axis=-1)
+    behind = background.at(elevation)
+    total = np.repeat((behind if polariser is None else 0.5 * behind)[..., None], len(sources[0].irradiance), axis=-1)
     for sheet in sheets:
         amount = sheet.amount(elevation)[..., None]
-        for source in sources:
-            light = sheet.scatterer.phase(source, directions, rows)
+        for source, scatterer in zip(sources, sheet.scatterers, strict=True):
+            if polariser is None:
+                light = scatterer.phase(source, directions, rows)
+            else:
+                i, q, u, _ = np.moveaxis(scatterer.phase(source, directions, rows, stokes=True), -1, 0)
+                axis = 2.0 * polariser[..., None]
+                light = 0.5 * (i + q * np.cos(axis) + u * np.sin(axis))
             light *= source.irradiance
             light *= amount
             total += light
+    return total
+
+
+def stokes(
+    directions: Directions, rows: slice, sources: Sequence[Source], sheets: Sequence[Sheet], background: Background
+) -> FloatArray:
+    """Return the Stokes vector of radiance, shape (ny, nx, nλ, 4), in each direction's meridian frame."""
+    _, elevation = azimuth_elevation(directions.vectors(rows))
+    total = np.zeros((*elevation.shape, len(sources[0].irradiance), 4))
+    total[..., 0] = background.at(elevation)[..., None]
+    for sheet in sheets:
+        amount = sheet.amount(elevation)[..., None, None]
+        for source, scatterer in zip(sources, sheet.scatterers, strict=True):
+            total += scatterer.phase(source, directions, rows, stokes=True) * source.irradiance[:, None] * amount
     return total

@@ -46,12 +46,23 @@ def test_tables_of_cie_15(wavelength_nm, expected):
     np.testing.assert_allclose(values[wavelength_nm - 360], expected, rtol=0.0, atol=1.01e-5)
 
 
-@pytest.mark.parametrize("name", observer.OBSERVERS)
+@pytest.mark.parametrize("name", NAMES)
 def test_baked_tables_equal_colour_science(name):
     wavelength, values = observer.matching_functions(name)
     functions = colour.MSDS_CMFS[NAMES[name]]
     assert np.array_equal(values, functions.values)
     np.testing.assert_allclose(wavelength, functions.wavelengths * 1e-9, rtol=1e-15)
+
+
+def test_scotopic_observer_is_cie_1951():
+    """V'(λ) of CIE 1951 as colour-science carries it, 1700.06 lm W⁻¹ at its peak near 507 nm, in one chromaticity."""
+    wavelength, values = observer.matching_functions("scotopic")
+    curve = colour.SDS_LEFS["CIE 1951 Scotopic Standard Observer"]
+    expected = np.interp(wavelength * 1e9, curve.wavelengths, curve.values, 0.0, 0.0)
+    assert observer.LUMINOUS_EFFICACY * values[:, 1] == pytest.approx(1700.06 * expected, rel=1e-12)
+    assert wavelength[values[:, 1].argmax()] == pytest.approx(507e-9, abs=1e-9)
+    lit = values[:, 1] > 0
+    assert np.ptp(values[lit, 0] / values[lit, 1]) < 1e-12
 
 
 def test_line_of_555_nm_has_the_luminous_efficacy_of_the_si():
@@ -134,7 +145,7 @@ def test_float32_and_nan_pass_through():
 
 def test_faults_are_worded():
     bins = Bins.lines([500e-9])
-    with pytest.raises(DomainError, match="'1932', allowed are 1931 and 1964; did you mean 1931"):
+    with pytest.raises(DomainError, match="'1932', allowed are 1931, 1964, scotopic; did you mean 1931"):
         observer.weights(bins, "1932")
     with pytest.raises(DomainError, match="has to hold 1 spectral bins"):
         observer.xyz(np.ones((4, 2)), bins)

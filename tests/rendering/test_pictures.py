@@ -74,9 +74,9 @@ def test_radiance_is_irradiance_phase_amount():
     job, sheet = result.job, result.sheets[0]
     view = job.directions.vectors()[4, 45]
     theta = float(angle_between(job.sources[0].direction, view))
-    curve = sheet.scatterer.table.elements[0, :, :, 0]
-    p11 = np.array([np.interp(theta, sheet.scatterer.table.angle, curve[:, band]) for band in range(2)])
-    share = sheet.scatterer.share / (4 * np.pi)
+    curve = sheet.scatterers[0].table.elements[0, :, :, 0]
+    p11 = np.array([np.interp(theta, sheet.scatterers[0].table.angle, curve[:, band]) for band in range(2)])
+    share = sheet.scatterers[0].share / (4 * np.pi)
     expected = (0.01 + job.sources[0].irradiance * p11 * share * 0.1) @ weights(job.bins)
     assert result.xyz[4, 45] == pytest.approx(expected, rel=1e-5)
 
