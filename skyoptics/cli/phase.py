@@ -53,7 +53,16 @@ CSV = click.option("--csv", type=click.Path(path_type=Path, allow_dash=True), he
 
 @command.command("drop")
 @click.option("--radius-um", type=click.FloatRange(1, 10000), default=500.0, show_default=True, help="Radius [µm].")
-@click.option("--method", type=Word(["rays"]), default="rays", show_default=True, help="Ray optics.")
+@click.option(
+    "--method",
+    type=Word(["rays", "mie", "airy", "auto"]),
+    default="rays",
+    show_default=True,
+    help="Ray optics, Lorenz-Mie, Airy's theory, or whichever fits.",
+)
+@click.option(
+    "--spread", type=click.FloatRange(0, 0.5), default=0.0, show_default=True, help="Gaussian, relative to the radius."
+)
 @WAVELENGTHS
 @click.option(
     "--temperature-c", type=click.FloatRange(-12, 99), default=20.0, show_default=True, help="Of the water [°C]."

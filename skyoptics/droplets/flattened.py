@@ -15,19 +15,27 @@ What is exact, and what is not:
   between them; in bins of 0.5° by 10°, pooled over three (over more near the source and the antisolar point). Their bows
   are smeared by that.
 - Orders 2 and 3: the caustic of each size by exact search (`skyoptics.droplets.flattened_caustic`); on it the sphere's
-  Airy curve of the same volume, shifted, not stretched: fringe spacing is that of the sphere, while a spheroid's differs by
-  some times ρ. Brightness: for each polarisation the light of the traced rays ÷ that of the sphere's two Airy rays, as a
-  function of the distance from the caustic and of position angle, linear in axis ratio, index, and √distance. So the mean
-  of the fringes is the ray light at any distance. Fringes fade into it where their places fail (`airy.trusted_angle`, a
-  quarter of a period) and where sizes are sampled too coarsely for them. Beyond the fold's meeting with the cusped
-  caustic (axis ratio below about 0.77) diffraction there is that of a plain fold. Drops flatter than can be followed keep
-  the place of the last that can.
+  Airy curve of the same volume, shifted, not stretched: fringe spacing is that of the sphere. At the top of the bow a
+  spheroid's own, by the curvature of its traced map, is 1 − ρ (level sun) to 1 + 0.6 ρ (sun at 30°) times that in the
+  primary, but 1 − 4 ρ to 1 − 7 ρ in the secondary, ρ = (1 − q)/(1 + q): 3 and 16 % at q = 0.95.
+  Brightness: for each polarisation the light of the traced rays ÷ that of the sphere's two Airy rays, as a function of the
+  distance from the caustic and of position angle, linear in axis ratio, index, and √distance. So the mean of the fringes
+  is the ray light at any distance: over the first 1.5° of the bows of round drops of 0.25 mm radius it is within 1 % of
+  the exact Debye term's peak, where Airy's own curve errs by 1 % (p = 2) and 7 % (p = 3). Fringes fade into that mean where
+  their places fail (`airy.trusted_angle`, a quarter of a period) and where sizes are sampled too coarsely for them. Beyond
+  the fold's meeting with the cusped caustic (axis ratio below about 0.77, a low sun's bow away from top and foot) light
+  outside the fold is put on it, and diffraction is that of a plain fold. Drops flatter than can be followed keep the place
+  of the last that can.
+- Law: `thurai2007` is round below 0.7 mm diameter by its definition and flatter by half a per cent at once beyond, so the
+  angle's standstill falls on that step (radius 0.35 mm). `beard-chuang1987` is smooth there and has it at 0.25 mm, as
+  Fraser: take it where supernumeraries matter.
 - Canting moves the caustics and orders other than 2 and 3; brightness by position angle in these two is that of upright
   drops.
-- Absorption: of the bow ray's path in a sphere for orders 2 and 3; along each ray for others, linear in wavelength between
-  the ends of the spectrum (visible light loses some thousandths).
-- Cut off: orders above 7 (1e-4 of the light). Diffraction is left out, as by all ray tables: the traced half of the
-  extinction is here.
+- Absorption: along each traced ray, for the mean size at a traced axis ratio, linear in index between the ends of the
+  spectrum; for orders 2 and 3 corrected to each size and wavelength by the bow ray's path in a sphere. Visible light loses
+  some thousandths.
+- Cut off: orders above 7 (3e-4 of the light for spheres, 6e-4 in heavy rain). Diffraction is left out, as by all ray
+  tables: the traced half of the extinction is here.
 - Airy's theory needs size parameters of some hundreds at least; distributions with more than 1 % of their cross-section in
   drops below 100 are refused.
 """
@@ -35,19 +43,26 @@ What is exact, and what is not:
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
 from math import ceil, pi
 
 import numpy as np
 
 from skyoptics.droplets import airy
-from skyoptics.droplets.axis_ratio import LIMITS, axis_ratio
 from skyoptics.droplets.flattened_caustic import LEAST_RATIO, follow
-from skyoptics.droplets.sizes import SizeDistribution, quadrature
+from skyoptics.droplets.flattened_light import Plan, TracedLight, strength, trace_batch
+from skyoptics.droplets.flattened_shape import (
+    GOLDEN,
+    Samples,
+    axes_with_power,
+    samples_of,
+    shadow,
+    surface,
+    tilted_axes,
+)
+from skyoptics.droplets.sizes import SizeDistribution
 from skyoptics.errors import DomainError
 from skyoptics.geometry.axes import azimuth_elevation, direction
 from skyoptics.kernels import KERNEL_HASH, fold, spheroid
-from skyoptics.kernels.random import batch_key
 from skyoptics.optics import bows
 from skyoptics.optics.batches import Executor, in_order
 from skyoptics.optics.bins import Bins
@@ -60,19 +75,15 @@ IndexLaw = Callable[[FloatArray], ArrayLike]
 ALL_ORDERS = tuple(range(spheroid.ORDERS))
 LEAST_SIZE_PARAMETER = 100.0
 MOST_CANTING = 30.0 * DEG
-ANGLE_BINS = 360
-"""Bins of scattering angle of the traced orders."""
-POSITION_BINS = 36
-"""Bins of position angle of the traced light, whole circle."""
-DISTANCE_BINS = 64
-"""Bins of √(distance from the caustic)."""
+_SUMS_BYTES = 120_000_000
+"""Taken by the sums of traced light."""
 SAMPLES = 192
 """Sizes summed (each with its own place in the spectral bin, and its own canted axis)."""
-TILTS = 32
 _RATIO_STEP = 0.06
+"""Between traced axis ratios, at most; `_CAUSTIC_STEP` between those whose caustics are searched (cubic in between)."""
 _CAUSTIC_STEP = 0.02
 _CAUSTIC_NODES = 61
-_GOLDEN = (0.6180339887498949, 0.4142135623730951)
+_SILVER = 0.4142135623730951
 
 
 def default_edges() -> FloatArray:
@@ -82,9 +93,9 @@ def default_edges() -> FloatArray:
 
 
 def memory(bins: Bins, edges: FloatArray | None = None, position_step: float = 3.0 * DEG) -> int:
-    """Return the bytes `flattened_scatterer` needs at its peak: three copies of the table, 16 bytes an entry."""
+    """Return the bytes `flattened_scatterer` needs at its peak: copies of the table, 16 bytes an entry, and the rays' sums."""
     rows = len(default_edges() if edges is None else edges) + 1
-    return 3 * 16 * (ceil(pi / position_step) + 1) * rows * len(bins)
+    return 3 * 16 * (ceil(pi / position_step) + 1) * rows * len(bins) + _SUMS_BYTES
 
 
 def flattened_scatterer(
@@ -148,27 +159,20 @@ def flattened_scatterer(
 
     Notes
     -----
-    Limits are listed at the top of this module.
+    Limits are listed at the top of this module. A rain spectrum in 33 spectral bins takes 6 s of processor time upright and
+    10 s canted (AVX2 or better), spread over the executor's threads; for memory see `memory`.
     """
     _check(canting, position_step, orders, samples, batches, edges)
     edges = default_edges() if edges is None else np.asarray(edges, dtype=np.float64)
     wide = bool(np.any(bins.width > 0.0)) or canting > 0.0
-    sizes = _sizes(distribution, law, samples, wide)
+    sizes = samples_of(distribution, law, samples, wide)
     if 2.0 * pi * sizes.radius.min() / bins.edges.max() < LEAST_SIZE_PARAMETER:
         small = 2.0 * pi * sizes.radius / bins.edges.max() < LEAST_SIZE_PARAMETER
         if sizes.weight[small].sum() > 0.01 * sizes.weight.sum():
             raise DomainError("more than 1 % of the cross-section lies in drops too small for Airy's theory: use Mie")
-    return _Maker(sizes, index, bins, source, canting, edges, position_step, tuple(orders), batches, seed).make(executor)
-
-
-@dataclass(frozen=True, eq=False)
-class _Sizes:
-    """Samples: radius [m], share of number times r² [m²], axis ratio, relative step of radius between neighbours."""
-
-    radius: FloatArray
-    weight: FloatArray
-    ratio: FloatArray
-    cell: FloatArray
+    return _Maker(sizes, index, bins, source, canting, edges, position_step, tuple(orders), batches, seed).make(
+        executor
+    )
 
 
 def _check(
@@ -190,49 +194,12 @@ def _check(
             raise DomainError("angle edges must reach from 0 to 180 degrees: the table holds all the light")
 
 
-def _sizes(distribution: SizeDistribution, law: str, count: int, wide: bool) -> _Sizes:
-    """Return samples: dense where cross-section lies and where the bow moves with size."""
-    if law not in LIMITS:
-        axis_ratio(0.0, law)  # says so
-    radius, number = quadrature(distribution, 4)
-    weight = number * radius**2
-    inside = 2.0 * radius <= LIMITS[law] * (1.0 + 1e-12)
-    if not weight[inside].sum() > 0.99 * weight.sum():
-        raise DomainError(
-            f"more than 1 % of the cross-section lies in drops beyond {LIMITS[law] * 1e3:g} mm diameter, the end of "
-            f"{law}: cut the distribution"
-        )
-    radius, weight = radius[inside], weight[inside]
-    running = np.cumsum(weight) / weight.sum()
-    kept = (running > 1e-4) & (running - weight / weight.sum() < 1.0 - 1e-4)
-    radius, weight = radius[kept], weight[kept]
-    if len(radius) <= 8:
-        copies = ceil(24 / len(radius)) if wide else 1
-        radius, weight = np.repeat(radius, copies), np.repeat(weight / copies, copies)
-        return _Sizes(radius, weight, axis_ratio(2.0 * radius, law), np.zeros(len(radius)))
-    log = np.log(radius)
-    middle = np.concatenate([log[:1], 0.5 * (log[1:] + log[:-1]), log[-1:]])
-    travel = np.abs(np.diff(axis_ratio(2.0 * np.exp(np.minimum(middle, np.log(0.5 * LIMITS[law]))), law)))
-    measure = 0.5 * weight / weight.sum() + 0.25 * np.diff(middle) / (middle[-1] - middle[0])
-    measure += 0.25 * travel / max(travel.sum(), 1e-12)
-    place = np.interp(np.linspace(0.0, measure.sum(), count + 1), _summed(measure), middle)
-    mass = np.diff(np.interp(place, middle, _summed(weight)))
-    centre = np.diff(np.interp(place, middle, _summed(weight * log))) / np.maximum(mass, 1e-300)
-    good = mass > 1e-12 * mass.sum()
-    radius = np.minimum(np.exp(np.clip(centre, place[:-1], place[1:])), 0.5 * LIMITS[law])[good]
-    return _Sizes(radius, mass[good], axis_ratio(2.0 * radius, law), np.diff(place)[good])
-
-
-def _summed(values: FloatArray) -> FloatArray:
-    return np.concatenate([[0.0], np.cumsum(values)])
-
-
 class _Maker:
     """One table in the making."""
 
     def __init__(
         self,
-        sizes: _Sizes,
+        sizes: Samples,
         index: IndexLaw,
         bins: Bins,
         source: Source,
@@ -262,6 +229,8 @@ class _Maker:
         values = np.broadcast_to(np.asarray(index(wavelength.ravel()), dtype=np.complex128), wavelength.size)
         if not np.all(np.isfinite(values)) or np.any(values.real <= 1.0) or np.any(values.imag < 0.0):
             raise DomainError("flattened drops need an index n + ik with n > 1 and k >= 0 at every wavelength")
+        if np.any(values.imag > 0.01):
+            raise DomainError(f"the imaginary index {values.imag.max():g} is too large for rays (0.01 at most)")
         if np.any(values.real >= 2.0):
             raise DomainError("flattened drops need an index below 2: above it there is no primary bow")
         self.index = index
@@ -271,7 +240,7 @@ class _Maker:
         self.end_stokes = source.stokes[np.array(ends) // 5]
         self.stokes = np.asarray(source.stokes, dtype=np.float64)
         self.disc = source.disc
-        self.tilts = _tilts(canting, self.light)
+        self.tilts = tilted_axes(canting, self.light)
         lowest = float(sizes.ratio.min())
         if lowest < LEAST_RATIO:
             raise DomainError(f"drops flatter than {LEAST_RATIO} are not followed")
@@ -280,11 +249,30 @@ class _Maker:
             self.nodes = np.array([lowest])
         else:
             self.nodes = np.linspace(float(sizes.ratio.max()), lowest, ceil(spread / _RATIO_STEP) + 1)
-        place = (sizes.ratio - self.nodes[0]) / (self.nodes[1] - self.nodes[0]) if len(self.nodes) > 1 else 0.0 * sizes.ratio
+        place = (
+            (sizes.ratio - self.nodes[0]) / (self.nodes[1] - self.nodes[0])
+            if len(self.nodes) > 1
+            else 0.0 * sizes.ratio
+        )
         self.node = np.clip(place.astype(np.int64), 0, max(len(self.nodes) - 2, 0))
         self.part = np.clip(place - self.node, 0.0, 1.0)
-        self.surface = _surface(sizes.ratio)
+        radii = np.array([self._radius_of(float(q)) for q in self.nodes])
+        self.node_radius = np.interp(-sizes.ratio, -self.nodes, radii)
+        self.surface = surface(sizes.ratio)
         self.reference = 2.0 * pi * float(np.sum(sizes.weight * self.surface))
+
+        self.plan = Plan(
+            batches,
+            self.ends,
+            self.nodes,
+            self.node,
+            self.part,
+            sizes.weight,
+            orders,
+            self.angle,
+            self.position,
+            self.symmetric,
+        )
 
     def make(self, executor: Executor | None) -> PositionTable:
         """Trace, lay, add up."""
@@ -367,10 +355,10 @@ class _Maker:
 
     def _tilt_of_sample(self) -> np.ndarray:
         count = np.arange(len(self.sizes.radius))
-        return np.asarray((np.mod((count + 0.5) * _GOLDEN[0], 1.0) * len(self.tilts)).astype(np.int64))
+        return np.asarray((np.mod((count + 0.5) * GOLDEN, 1.0) * len(self.tilts)).astype(np.int64))
 
     def _place_of_sample(self) -> FloatArray:
-        return np.asarray(np.mod((np.arange(len(self.sizes.radius)) + 0.5) * _GOLDEN[1], 1.0))
+        return np.asarray(np.mod((np.arange(len(self.sizes.radius)) + 0.5) * _SILVER, 1.0))
 
     def _trusted(self, order: int) -> tuple[FloatArray, FloatArray]:
         """Return size parameters and distances from the caustic where fringes err by a quarter of a period."""
@@ -380,7 +368,7 @@ class _Maker:
         away = [abs(airy.trusted_angle(index, float(value), order, 0.25) - bow) for value in x]
         return x, np.maximum(np.array(away), 1e-4)
 
-    def _trace(self, executor: Executor | None) -> _Traced:
+    def _trace(self, executor: Executor | None) -> TracedLight:
         """Trace all nodes at both indices."""
         frame = np.concatenate([self.up, self.right])
         sides = np.array([float(bows.side(self.ends.real[0], p)) for p in spheroid.BOW_ORDERS])
@@ -397,15 +385,17 @@ class _Maker:
                 depth = float(self.end_absorption[end] * self._radius_of(float(ratio)) * ratio ** (-1.0 / 3.0))
                 curve = np.ascontiguousarray(np.stack([c[row] for c in caustics]))
                 for kind in (0, 1) if need_tilted else (0,):
-                    axes = _powers(self.tilts if kind else upright, float(ratio), self.light)
+                    axes = axes_with_power(self.tilts if kind else upright, float(ratio), self.light)
                     for batch in range(self.batches):
                         key = (self.seed, (end * 64 + row) * 2 + kind, batch)
-                        tasks.append((key, n, float(ratio), depth, self.beam, frame, self.end_stokes[end], axes, curve, sides))
-        result = _Traced(self, len(ends), need_tilted)
+                        tasks.append(
+                            (key, n, float(ratio), depth, self.beam, frame, self.end_stokes[end], axes, curve, sides)
+                        )
+        result = TracedLight(self.plan, len(ends), need_tilted)
         result.rays = len(tasks) * spheroid.RAYS
-        for (key, *_), part in zip(tasks, in_order(_batch, tasks, executor), strict=True):
+        for (key, *_), part in zip(tasks, in_order(trace_batch, tasks, executor), strict=True):
             result.add(key[1], part)
-        result.finish(self, same)
+        result.finish(same)
         return result
 
     def _bow_of_nodes(self, n: float, order: int, phi: FloatArray) -> FloatArray:
@@ -454,88 +444,15 @@ class _Maker:
         square = (view @ self.tilts.T) ** 2
         total = np.zeros(len(cosine))
         for q, weight in zip(self.sizes.ratio, self.sizes.weight, strict=True):
-            total += weight * _area(float(q), square).mean(axis=1)
+            total += weight * shadow(float(q), square).mean(axis=1)
         return 2.0 * pi * total / self.reference
-
-
-class _Traced:
-    """Sums over batches: bows by distance and other orders by angle, at each index and axis ratio."""
-
-    def __init__(self, maker: _Maker, ends: int, tilted: bool) -> None:
-        shape = (ends, len(maker.nodes))
-        self.tilted = tilted
-        self.rays = 0
-        self.sums = np.zeros((*shape, 2, DISTANCE_BINS, POSITION_BINS, 4))
-        self.squares = np.zeros((*shape, 2, DISTANCE_BINS, POSITION_BINS))
-        self.others = np.zeros((*shape, spheroid.ORDERS, ANGLE_BINS, POSITION_BINS, 4))
-        self.energy_sums = np.zeros((*shape, spheroid.ORDERS))
-        self.lost = np.zeros((*shape, 2))
-        self.brightness = np.empty(0)
-        self.smooth = np.empty(0)
-        self.energy = np.empty(0)
-        self.absorbed = self.cut_off = self.error = 0.0
-
-    def add(self, code: int, part: tuple[FloatArray, FloatArray, FloatArray, float, float]) -> None:
-        """Add a batch."""
-        kind = code % 2
-        end, row = divmod(code // 2, 64)
-        light, near, energy, absorbed, cut_off = part
-        if kind == 0:
-            self.sums[end, row] += near
-            self.squares[end, row] += near[..., 0] ** 2
-            self.energy_sums[end, row] += energy
-            self.lost[end, row] += absorbed, cut_off
-        if kind == 1 or not self.tilted:
-            self.others[end, row] += light
-
-    def finish(self, maker: _Maker, same: bool) -> None:
-        """Turn sums into factors by position angle (2 indices, 2 bows, nodes, nφ, DISTANCE_BINS, 4), and cross-sections."""
-        count = float(maker.batches * spheroid.RAYS)
-        deviation = np.sqrt(np.maximum(self.squares - self.sums[..., 0] ** 2 / maker.batches, 0.0))
-        self.error = float(deviation.sum() / self.sums[..., 0].sum()) * np.sqrt(maker.batches / (maker.batches - 1.0))
-        incident = self.energy_sums.sum(axis=-1) + self.lost.sum(axis=-1)
-        self.energy = (self.energy_sums / incident[..., None]).mean(axis=(0, 1))
-        self.absorbed, self.cut_off = (self.lost / incident[..., None]).mean(axis=(0, 1)).tolist()
-        root = np.linspace(0.0, np.sqrt(pi), DISTANCE_BINS + 1)
-        sums = np.stack([0.5 * (self.sums[..., 0] - self.sums[..., 1]), 0.5 * (self.sums[..., 0] + self.sums[..., 1])], axis=-1)
-        sums = np.concatenate([sums, self.sums[..., 2:]], axis=-1) * (pi / count / (2.0 * pi / POSITION_BINS))
-        for end in range(len(sums)):
-            n = float(maker.ends[end].real)
-            for bow, p in enumerate(spheroid.BOW_ORDERS):
-                h = airy.curvature(n, p)
-                strength = _strength(n, p)
-                scale = 0.5 * float(bows.impact(n, p)) / np.sqrt(h)
-                first, third = 2.0 * np.diff(root), (2.0 / 3.0) * np.diff(root**3) / h
-                s = scale * (strength[0] * first + strength[1] * third)
-                q = scale * (strength[2] * first + strength[3] * third)
-                sums[end, :, bow] /= np.stack([s, q, s + q, s + q], axis=-1)[:, None, :]
-        sums = _to_positions(sums, maker)
-        cosine = np.cos(np.linspace(0.0, pi, ANGLE_BINS + 1))
-        solid = -np.diff(cosine) * (2.0 * pi / POSITION_BINS)
-        chosen = [p for p in maker.orders if p not in (0, *spheroid.BOW_ORDERS)]
-        others = _pooled(self.others[:, :, chosen].sum(axis=2)) * (pi / count) / solid[:, None, None]
-        others = _to_positions(others, maker)
-        if same:
-            sums, others = np.repeat(sums, 2, axis=0), np.repeat(others, 2, axis=0)
-        if len(maker.nodes) == 1:
-            sums, others = np.repeat(sums, 2, axis=1), np.repeat(others, 2, axis=1)
-        # (2, bow, node, nφ, distance, 4)
-        self.brightness = np.ascontiguousarray(np.moveaxis(sums, (2, 4), (1, 3)))
-        weight = np.zeros(others.shape[1])
-        np.add.at(weight, maker.node, maker.sizes.weight * (1.0 - maker.part))
-        np.add.at(weight, maker.node + 1, maker.sizes.weight * maker.part)
-        mixed = np.einsum("nrapk,r->npak", others, weight)
-        middle = (np.arange(ANGLE_BINS) + 0.5) * (pi / ANGLE_BINS)
-        place = np.clip(np.searchsorted(middle, maker.angle) - 1, 0, ANGLE_BINS - 2)
-        part = np.clip((maker.angle - middle[place]) / (middle[1] - middle[0]), 0.0, 1.0)[:, None]
-        self.smooth = mixed[:, :, place] * (1.0 - part) + mixed[:, :, place + 1] * part
 
 
 def _band(
     maker: _Maker,
     band: int,
     shifts: dict[int, FloatArray],
-    traced: _Traced,
+    traced: TracedLight,
     outside: FloatArray | None,
     running: FloatArray,
     trusted: dict[int, tuple[FloatArray, FloatArray]],
@@ -555,8 +472,10 @@ def _band(
         h = airy.curvature(centre, p)
         x = 2.0 * pi * sizes.radius / wavelength
         caustic = shift[0] + at[:, None] * (shift[1] - shift[0]) + bows.scattering_angle(index.real, p)[:, None]
-        path = 2.0 * p * np.cos(float(bows.refraction(centre, p))) * sizes.radius
-        weight = sizes.weight * np.exp(-4.0 * pi * index.imag / wavelength * path)
+        # the traced light is dimmed already, as for the drops its nodes stand for
+        dimmed = (1.0 - at) * maker.end_absorption[0] + at * maker.end_absorption[1]
+        excess = 4.0 * pi * index.imag / wavelength * sizes.radius - dimmed * maker.node_radius
+        weight = sizes.weight * np.exp(-2.0 * p * np.cos(float(bows.refraction(centre, p))) * excess)
         brightness = traced.brightness[0, bow] * (1.0 - middle) + traced.brightness[1, bow] * middle
         part = np.zeros_like(out)
         fold.lay(
@@ -566,7 +485,7 @@ def _band(
             weight * (0.5 * float(bows.impact(centre, p)) / np.sqrt(h)),
             x ** (2.0 / 3.0) * h ** (-1.0 / 3.0),
             h,
-            _strength(centre, p),
+            strength(centre, p),
             np.exp(np.interp(np.log(x), np.log(trusted[p][0]), np.log(trusted[p][1]))),
             sizes.cell,
             maker.node,
@@ -602,97 +521,3 @@ def _reflected(maker: _Maker, band: int, index: float) -> FloatArray:
     result[..., 2] = cross * u[:, None]
     result[..., 3] = cross * v0
     return result
-
-
-def _strength(index: float, order: int) -> FloatArray:
-    """Return F² and G² of `skyoptics.droplets.airy` for ⊥, then ∥, read off its amplitudes at the bow ray (ζ = 0)."""
-    from scipy.special import airy as airy_functions
-
-    x = 1000.0
-    h, theta = airy.curvature(index, order), airy.bow_angle(index, order)
-    function, slope, _, _ = airy_functions(0.0)
-    scale = 2.0 * pi * float(bows.impact(index, order)) / np.sin(theta) * x ** (7.0 / 3.0) * h ** (-2.0 / 3.0)
-    result = []
-    for s in airy.amplitudes(complex(index), x, theta, order):
-        result += [float(s.real) ** 2 / (scale * function**2), float(s.imag) ** 2 / (scale * slope**2) * (x * h) ** (2.0 / 3.0)]
-    return np.array(result)
-
-
-def _to_positions(values: FloatArray, maker: _Maker) -> FloatArray:
-    """Interpolate from bins of position angle (axis -2, Stokes-like axis -1) to the table's; mirror halves made one."""
-    if maker.symmetric:
-        mirrored = values[..., ::-1, :] * np.array([1.0, 1.0, -1.0, -1.0])
-        values = 0.5 * (values + mirrored)
-    place = (maker.position + pi) / (2.0 * pi) * POSITION_BINS - 0.5
-    before = np.floor(place).astype(np.int64)
-    part = (place - before)[:, None]
-    first, second = values[..., before % POSITION_BINS, :], values[..., (before + 1) % POSITION_BINS, :]
-    return np.asarray(first * (1.0 - part) + second * part)
-
-
-def _pooled(values: FloatArray) -> FloatArray:
-    """Average over neighbouring bins: three angles, and as many positions as make up the arc of three at the equator."""
-    sine = np.sin((np.arange(ANGLE_BINS) + 0.5) * (pi / ANGLE_BINS))
-    light = np.pad(values, [(0, 0)] * (values.ndim - 3) + [(1, 1), (0, 0), (0, 0)])
-    solid = np.pad(sine, 1)
-    light = sum(light[..., k : k + ANGLE_BINS, :, :] for k in range(3))
-    values = light * (sine / sum(solid[k : k + ANGLE_BINS] for k in range(3)))[:, None, None]
-    out = np.empty_like(values)
-    for row, s in enumerate(sine):
-        half = min(round(1.0 / s), POSITION_BINS // 2)
-        rolled = [np.roll(values[..., row, :, :], k, axis=-2) for k in range(-half, half + 1)]
-        out[..., row, :, :] = sum(rolled) / len(rolled)
-    return out
-
-
-def _batch(
-    key: tuple[int, int, int],
-    index: float,
-    ratio: float,
-    depth: float,
-    beam: FloatArray,
-    frame: FloatArray,
-    stokes: FloatArray,
-    axes: FloatArray,
-    caustics: FloatArray,
-    sides: FloatArray,
-) -> tuple[FloatArray, FloatArray, FloatArray, float, float]:
-    """Trace one batch (a function of its own, so that it can be sent to another process)."""
-    low, high = batch_key(*key)
-    result: tuple[FloatArray, FloatArray, FloatArray, float, float] = spheroid.trace(
-        low, high, spheroid.RAYS, index, ratio, depth, beam, frame, np.ascontiguousarray(stokes), axes, caustics, sides,
-        ANGLE_BINS, POSITION_BINS, DISTANCE_BINS,
-    )  # fmt: skip
-    return result
-
-
-def _tilts(canting: float, light: FloatArray) -> FloatArray:
-    """Return axes of equal weight, shape (1 or TILTS, 3): half of them mirror images in the vertical through the light."""
-    if canting == 0.0:
-        return np.array([[0.0, 0.0, 1.0]])
-    count = np.arange(TILTS // 2) + 0.5
-    tilt = canting * np.sqrt(-2.0 * np.log(1.0 - count / (TILTS // 2)))
-    turn = 2.0 * pi * np.mod(count * _GOLDEN[0], 1.0)
-    azimuth = float(azimuth_elevation(light)[0])
-    turn = np.concatenate([turn, -turn])
-    tilt = np.minimum(np.concatenate([tilt, tilt]), 0.5 * pi)
-    return direction(azimuth + turn, 0.5 * pi - tilt)
-
-
-def _powers(axes: FloatArray, ratio: float, light: FloatArray) -> FloatArray:
-    """Return axes with the area a drop of unit volume radius shows along the light, ÷ π, shape (k, 4)."""
-    return np.ascontiguousarray(np.column_stack([axes, _area(ratio, (axes @ light) ** 2)]))
-
-
-def _area(ratio: float, square: FloatArray) -> FloatArray:
-    """Return the projected area ÷ π r², r of equal volume, given the squared cosine between axis and direction."""
-    return np.asarray(ratio ** (-2.0 / 3.0) * np.sqrt(ratio**2 * (1.0 - square) + square))
-
-
-def _surface(ratio: FloatArray) -> FloatArray:
-    """Return the surface ÷ 4π r², the mean of `_area` over all orientations (Cauchy's theorem)."""
-    q = np.minimum(ratio, 1.0 - 1e-9)
-    e = np.sqrt(1.0 - q**2)
-    return np.asarray(0.5 * q ** (-2.0 / 3.0) * (1.0 + q**2 / e * np.arctanh(e)))
-
-

@@ -26,10 +26,13 @@ from skyoptics.units import ArrayLike, FloatArray
 
 LEAST_RATIO = 0.5
 """Flattest drop that is followed (the laws' largest drops have 0.53) [1]."""
-_STEP = 0.02
+_STEP = 0.01
 _STENCIL = 2e-3
-_CONVERGED = 1e-4
-"""Last step of Newton's method that still counts as arrived [rad]: the angle errs by the square of it."""
+_CONVERGED = 1e-3
+"""Last correction by Newton's method that still counts as arrived [rad]; a further one follows at the end."""
+_LONGEST = 0.25
+"""Largest move of the entry in one step of the axis ratio; a longer one is a leap to another fold [rad]."""
+_GRAZING = 0.5 * np.pi - 3.0 * _STENCIL
 _UPRIGHT = (0.0, 0.0, 1.0)
 
 
@@ -61,7 +64,8 @@ def caustic_angle(
     Returns
     -------
     ndarray
-        [rad], wrong by less than 1e-7; nan where the fold could not be followed.
+        [rad], wrong by less than 1e-6; nan where the fold could not be followed: it ends where its ray grazes the drop, and where
+        the bow has shrunk to the antisolar point.
 
     Raises
     ------
@@ -132,15 +136,21 @@ def follow(
     turn = position_angle + np.where(np.sin(bows.deviation(index, order)) > 0.0, 0.0, np.pi)
     result = np.empty(ratios.shape)
     before = np.ones(ratios.shape[1])
+    lost = np.zeros(ratios.shape[1], dtype=bool)
     for row, ratio in enumerate(ratios):
         steps = max(ceil(float(np.abs(ratio - before).max(initial=0.0)) / _STEP), 1)
         for step in range(1, steps + 1):
             here = before + (ratio - before) * (step / steps)
-            for _ in range(2 if step < steps else 4):
-                old_slant, old_turn = slant, turn
+            first_slant, first_turn = slant, turn
+            for _ in range(3 if step < steps else 4):
+                last_slant, last_turn = slant, turn
                 slant, turn, result[row] = map_.newton(here, slant, turn)
-        strayed = np.hypot(slant - old_slant, turn - old_turn) > _CONVERGED
-        result[row, strayed] = np.nan
+            moved = np.hypot(slant - first_slant, turn - first_turn)
+            correction = np.hypot(slant - last_slant, turn - last_turn)
+            # written so that nan is lost as well
+            lost |= ~((correction < _CONVERGED) & (moved < _LONGEST) & (slant < _GRAZING))
+            slant, turn = np.where(lost, first_slant, slant), np.where(lost, first_turn, turn)
+        result[row, lost] = np.nan
         before = ratio
     return result
 
@@ -156,6 +166,7 @@ class _Map:
         self.order = order
         # the sun stands in the north: light travels south and down, the antisolar point lies in the south
         zero = np.zeros_like(elevation)
+        elevation = np.clip(elevation, -0.5 * np.pi + 1e-9, 0.5 * np.pi - 1e-9)  # in the zenith there is no north
         self.beam = -direction(zero, elevation)
         self.up = direction(zero + np.pi, -elevation + 0.5 * np.pi)
         self.position = position
@@ -163,7 +174,9 @@ class _Map:
         self.axes = np.tile(axis, (9, 1))
         self.beams = np.tile(self.beam, (9, 1))
 
-    def newton(self, ratio: FloatArray, slant: FloatArray, turn: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
+    def newton(
+        self, ratio: FloatArray, slant: FloatArray, turn: FloatArray
+    ) -> tuple[FloatArray, FloatArray, FloatArray]:
         """Return the next entry, and the scattering angle of the quadratic model there."""
         h = _STENCIL
         slants = (slant + self.offset[:, :1]).ravel()
@@ -185,7 +198,7 @@ class _Map:
             b = (-g[1] * jacobian + g[0] * by_slant) / determinant
         a, b = np.clip(a, -0.05, 0.05), np.clip(b, -0.1, 0.1)
         model = f[0] + f[1] * a + f[2] * b + 0.5 * f[3] * a * a + f[4] * a * b + 0.5 * f[5] * b * b
-        return np.clip(slant + a, 0.05, 0.5 * np.pi - 2.0 * h), turn + b, model
+        return np.clip(slant + a, 0.05, _GRAZING), turn + b, model
 
 
 def _derivatives(values: FloatArray, h: float) -> tuple[FloatArray, ...]:

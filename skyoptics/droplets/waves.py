@@ -11,19 +11,19 @@ Both are absolute: `shares` gives what turns P11/4π into differential scatterin
 
 from __future__ import annotations
 
-from dataclasses import replace
 from math import pi
 from typing import Any, Literal, NamedTuple
 
 import numpy as np
 
 from skyoptics.droplets import airy, geometric, mie
+from skyoptics.droplets.airy_table import with_bows
 from skyoptics.droplets.angles import default_edges
-from skyoptics.droplets.bin_averages import GOLDEN, IndexLaw, Progress, average_bins
+from skyoptics.droplets.bin_averages import IndexLaw, Progress, average_bins
 from skyoptics.droplets.sizes import SizeDistribution, effective_radius, quadrature
 from skyoptics.droplets.wave_angles import nodes, typical_radius
 from skyoptics.errors import DomainError, nearest
-from skyoptics.optics.batches import Executor, in_order
+from skyoptics.optics.batches import Executor
 from skyoptics.optics.bins import Bins
 from skyoptics.optics.table import ScatteringTable
 from skyoptics.units import DEG, NM, UM, ArrayLike, FloatArray
@@ -41,10 +41,6 @@ COSTLY = 60.0
 """Seconds of one core beyond which `choose_method` looks for something cheaper."""
 USUAL_SIZES = 385
 """Drops summed for a table at the usual tolerance."""
-AIRY_SIZES = 200
-"""Pairs of size and wavelength that Airy's curves are averaged over in a bin, at least."""
-DARK = -6.0
-"""Reduced angle below which a bow's light is 1e-10 of its peak and is left out."""
 
 
 class Choice(NamedTuple):
@@ -122,7 +118,7 @@ def scattering_table(
             index, radius, bins, edges=edges, seed=seed, relative_error=tolerance, executor=executor, progress=progress
         )
         if choice.method == "airy":
-            table = _airy(table, distribution, index, bins, executor)
+            table = with_bows(table, distribution, index, bins, executor)
         extinction = np.full(len(bins), 2.0 * pi * float(distribution.moment(2)))
         table.report.update(
             extinction_m2=extinction.tolist(),
@@ -313,106 +309,3 @@ def _known(index: Any, bins: Bins) -> tuple[float, float]:
     low = getattr(index, "minimum_wavelength", float(bins.edges.min()))
     high = getattr(index, "maximum_wavelength", float(bins.edges.max()))
     return max(low, 1e-12), high
-
-
-def _airy(
-    table: ScatteringTable, distribution: SizeDistribution, index: IndexLaw, bins: Bins, executor: Executor | None
-) -> ScatteringTable:
-    """Put Airy's bows into a ray table, and its normalisation right again."""
-    elements = table.elements.copy()
-    error = table.error.copy()
-    report = dict(table.report)
-    reach: dict[str, list[float]] = {}
-    tasks = [(order, band) for order in airy.ORDERS for band in range(len(bins))]
-    arguments = (
-        (distribution, index, bins, band, table.angle, order, float(table.albedo[band])) for order, band in tasks
-    )
-    for (order, band), found in zip(tasks, in_order(bow, arguments, executor), strict=True):
-        row = table.parts.index(str(order))
-        weight = found.weight[:, np.newaxis]
-        elements[row, :, band] = weight * found.elements + (1.0 - weight) * elements[row, :, band]
-        error[row, :, band] *= 1.0 - found.weight
-        reach.setdefault(str(order), []).append(found.limit / DEG)
-    whole = replace(table, elements=elements, error=error)
-    excess = whole.energy().sum(axis=0)
-    report.update(
-        airy_trusted_to_deg=reach,
-        airy_energy_excess=(excess - 1.0).tolist(),
-    )
-    cosine = np.einsum("ptw,t,t->w", elements[..., 0], whole.solid_angle(), np.cos(table.angle)) / (4.0 * pi)
-    return replace(
-        whole,
-        elements=elements / excess[:, np.newaxis],
-        error=error / excess,
-        albedo=table.albedo * excess,
-        asymmetry=cosine / excess,
-        report=report,
-    )
-
-
-class Bow(NamedTuple):
-    """One of Airy's bows, see `bow`."""
-
-    elements: FloatArray
-    weight: FloatArray
-    limit: float
-
-
-def bow(
-    distribution: SizeDistribution,
-    index: IndexLaw,
-    bins: Bins,
-    band: int,
-    angle: FloatArray,
-    order: int,
-    albedo: float = 1.0,
-    everywhere: bool = False,
-) -> Bow:
-    """Return one of Airy's bows, averaged over sizes and one spectral bin.
-
-    Parameters
-    ----------
-    distribution, index, bins
-        As `scattering_table`.
-    band : int
-        Which bin.
-    angle : ndarray, shape (nθ,)
-        0 < angle < π [rad].
-    order : int
-        2 or 3.
-    albedo : float
-        Of the ray table it goes into: elements are normalised so that the scattered cross-section albedo · π⟨r²⟩ makes
-        ∫ P11 dΩ = 4π over all orders.
-    everywhere : bool
-        Whether to go on beyond the trusted angle; `weight` is 1 then.
-
-    Returns
-    -------
-    Bow
-        `elements` (nθ, 6) P11 P12 P22 P33 P34 P44 [1], 0 where `weight` is 0 and deep in the dark; `weight` (nθ,), 1 where
-        Airy's fringes lie right, falling to 0 at the trusted angle, 1 in the dark; `limit`, the trusted angle [rad].
-    """
-    middle = complex(np.asarray(index(bins.centre[band : band + 1]), np.complex128).item())
-    x = 2.0 * pi * typical_radius(distribution) / float(bins.centre[band])
-    limit = airy.trusted_angle(middle, x, order)
-    start = airy.bow_angle(middle, order)
-    place = np.clip((angle - start) / (limit - start), 0.0, 1.0)
-    weight = np.where((place < 0.5) | everywhere, 1.0, np.cos(pi * (place - 0.5)) ** 2)
-
-    radius, number = quadrature(distribution, 1)
-    seen = number > 1e-12 * number.max()
-    radius, number = radius[seen], number[seen]
-    copies = 1 if bins.width[band] == 0.0 else -(-AIRY_SIZES // len(radius))
-    radius, number = np.repeat(radius, copies), np.repeat(number, copies) / copies
-    wavelength = bins.at(np.modf((np.arange(len(radius)) + 0.5) * GOLDEN)[0])[band]
-    medium = np.broadcast_to(np.asarray(index(wavelength), np.complex128), wavelength.shape)
-    products = np.zeros((4, len(angle)))
-    area = 0.0
-    for m, r, w, length in zip(medium.tolist(), radius, number, wavelength, strict=True):
-        size = 2.0 * pi * r / length
-        area += w * pi * r**2
-        lit = (weight > 0.0) & (airy.reduced_angle(m, size, angle, order) > DARK)
-        if np.any(lit):
-            products[:, lit] += w * length**2 * mie.products(*airy.amplitudes(m, size, angle[lit], order))
-    # dσ/dΩ = (λ/2π)² |S|², over the scattered cross-section ÷ 4π
-    return Bow(mie.mueller_elements(products, 1.0 / (pi * albedo * area)), weight, limit)

@@ -96,11 +96,13 @@ def _curves(
 @njit(cache=True, nogil=True, error_model="numpy")
 def _factors(work: Any, count: Any, local: Any) -> None:
     """Look up the factors, linear in √u between the middles of their bins; local (nu + 1, 4)."""
-    last = len(local) - 2
+    last = np.int32(len(local) - 2)
     for i in range(count):
         spot = work[_SPOT + i]
-        j = min(np.int32(spot), last)
-        f = min(spot - j, 1.0)
+        j = np.int32(spot)
+        j = j if j < last else last
+        f = spot - j
+        f = f if f < 1.0 else 1.0
         k = np.uint64(np.uint32(j))
         m = k + np.uint64(1)
         work[_FACTOR_S + i] = local[k, 0] + f * (local[m, 0] - local[k, 0])

@@ -73,7 +73,7 @@ _AXIS_DIMENSION = 3
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def _sine_cosine_turn(u: Any) -> Any:
-    """Return sin and cos of 2πu, u in [0, 1], from the half angle's series; error below 1e-11."""
+    """Return sin and cos of 2πu, u in [0, 1], from series of the half angle; error below 5e-11."""
     x = np.pi * (u - 0.5)
     z = x * x
     s = 1.0 + z * (_S3 + z * (_S5 + z * (_S7 + z * (_S9 + z * (_S11 + z * (_S13 + z * _S15))))))
@@ -256,7 +256,11 @@ def _hit(state: Any, index: Any, ratio: Any, depth: Any) -> None:
         state[_SX + i], state[_SY + i], state[_SZ + i] = mx, my, mz
         state[_PX + i], state[_PY + i], state[_PZ + i] = px, py, pz
         turn = ct - index * ci
-        state[_EX + i], state[_EY + i], state[_EZ + i] = index * dx + turn * nx, index * dy + turn * ny, index * dz + turn * nz
+        state[_EX + i], state[_EY + i], state[_EZ + i] = (
+            index * dx + turn * nx,
+            index * dy + turn * ny,
+            index * dz + turn * nz,
+        )
         turn = 2.0 * ci
         state[_DX + i], state[_DY + i], state[_DZ + i] = dx - turn * nx, dy - turn * ny, dz - turn * nz
 
@@ -342,11 +346,11 @@ def trace(
             state[_V + i] = (np.float64(np.uint32(x ^ shift)) + 0.5) * 2.0**-32
         for i in range(WIDTH):
             number = np.uint32(first + i)
-            row = np.int64(hash32(key_low, key_high, number, np.uint32(_AXIS_DIMENSION)) & mask)
-            state[_AX + i] = axes[row, 0]
-            state[_AY + i] = axes[row, 1]
-            state[_AZ + i] = axes[row, 2]
-            state[_POWER + i] = axes[row, 3]
+            chosen = np.int64(hash32(key_low, key_high, number, np.uint32(_AXIS_DIMENSION)) & mask)
+            state[_AX + i] = axes[chosen, 0]
+            state[_AY + i] = axes[chosen, 1]
+            state[_AZ + i] = axes[chosen, 2]
+            state[_POWER + i] = axes[chosen, 3]
         _enter(state, beam, index, ratio, stokes)
         for p in range(ORDERS):
             if p > 0:
@@ -358,8 +362,8 @@ def trace(
             for i in range(WIDTH):
                 theta = state[_THETA + i]
                 turn = state[_PHI + i] + np.pi
-                row = min(max(np.int64(theta * per_angle), 0), angle_bins - 1)
-                column = min(max(np.int64(turn * per_position), 0), position_bins - 1)
+                row = min(int(theta * per_angle), angle_bins - 1)
+                column = min(int(max(turn, 0.0) * per_position), position_bins - 1)
                 power = state[_EI + i]
                 energy[p] += power
                 light[p, row, column, 0] += power
@@ -368,11 +372,11 @@ def trace(
                 light[p, row, column, 3] += state[_EV + i]
                 if bow == 0 or bow == 1:
                     place = turn * per_knot
-                    knot = min(max(np.int64(place), 0), KNOTS - 2)
+                    knot = min(int(max(place, 0.0)), KNOTS - 2)
                     part = place - knot
                     edge = caustics[bow, knot] + part * (caustics[bow, knot + 1] - caustics[bow, knot])
                     away = max(sides[bow] * (theta - edge), 0.0)
-                    row = min(np.int64(np.sqrt(away) * per_distance), distance_bins - 1)
+                    row = min(int(np.sqrt(away) * per_distance), distance_bins - 1)
                     bows[bow, row, column, 0] += power
                     bows[bow, row, column, 1] += state[_EQ + i]
                     bows[bow, row, column, 2] += state[_EU + i]

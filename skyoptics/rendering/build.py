@@ -15,6 +15,9 @@ import numpy as np
 from skyoptics.camera import frame
 from skyoptics.crystals.orientations import Orientation
 from skyoptics.crystals.shapes import Shape, hexagonal_prism
+from skyoptics.droplets import sizes as sizes_of
+from skyoptics.droplets.sizes import SizeDistribution, effective_radius
+from skyoptics.droplets.spectra import read_spectrum
 from skyoptics.errors import DataFileError, DomainError, Fault, SceneError
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.geometry.directions import Directions
@@ -34,11 +37,13 @@ from skyoptics.units import CELSIUS_ZERO, NM, FloatArray
 DEFAULT_EDGES_NM = (380.0, 400.0, 415.0, *np.arange(430.0, 681.0, 10.0).tolist(), 695.0, 715.0, 740.0, 780.0)
 """Edges of the default bins [nm]: 10 nm where the eye sees well, wider at the ends."""
 VISIBLE_NM = (380.0, 780.0)
+WATER_DENSITY = 1000.0
+"""For turning liquid water content into a number of drops [kg m⁻³]."""
 
 
 @dataclass(frozen=True, eq=False)
 class DropSheet:
-    """Drops of one size and where they hang.
+    """Drops and where they hang.
 
     Parameters
     ----------
@@ -47,11 +52,19 @@ class DropSheet:
     index : RefractiveIndex
         Of the drops, relative to what they float in.
     radius : float
-        [m]
+        Effective radius [m].
     orders : tuple of int
         Orders p to show.
     amount : callable
         Elevation [rad] → amount [1].
+    method : str
+        "rays", "mie", "airy" or "auto".
+    sizes : SizeDistribution
+        How the radius is spread; `radius` is its effective one.
+    axis_ratios : str
+        "round", or a law of `skyoptics.droplets.axis_ratio`.
+    canting : float
+        Spread of the tilt of flattened drops [rad].
     """
 
     name: str
@@ -59,6 +72,10 @@ class DropSheet:
     radius: float
     orders: tuple[int, ...]
     amount: Callable[[FloatArray], FloatArray]
+    method: str
+    sizes: SizeDistribution
+    axis_ratios: str = "round"
+    canting: float = 0.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -151,11 +168,16 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
             index(bins.edges)  # asks for the whole range now, not in the middle of a job
             name = particles.name or f"{particles.kind} {number}"
             if isinstance(particles, Drops):
-                sheets.append(DropSheet(name, index, particles.radius, particles.orders, _amount(particles)))
+                sizes = _sizes(particles)
+                amount = _amount(particles, _depth(particles, sizes))
+                radius = effective_radius(sizes)
+                shape = (particles.axis_ratios, particles.canting)
+                sheets.append(DropSheet(name, index, radius, particles.orders, amount, particles.method, sizes, *shape))
             else:
-                shape = hexagonal_prism(particles.aspect)
+                crystal = hexagonal_prism(particles.aspect)
                 orientation = Orientation(particles.orientation, particles.tilt)
-                sheets.append(CrystalSheet(name, index, shape, orientation, particles.diameter, _amount(particles)))
+                amount = _amount(particles, particles.optical_depth)
+                sheets.append(CrystalSheet(name, index, crystal, orientation, particles.diameter, amount))
     with _blame(where, "camera"):
         directions = _directions(scene, sources[0])
     return Job(
@@ -213,10 +235,43 @@ def _index(particles: Drops | Crystals, medium: str) -> material.RefractiveIndex
     return material.ice(medium)
 
 
-def _amount(particles: Drops | Crystals) -> Callable[[FloatArray], FloatArray]:
+def _sizes(drops: Drops) -> SizeDistribution:
+    match drops.sizes:
+        case "lognormal":
+            return sizes_of.LogNormal(drops.radius, drops.spread)
+        case "effective":
+            return sizes_of.HansenTravis(drops.radius, drops.effective_variance)
+        case "gamma":
+            return sizes_of.UlbrichGamma(2.0 * drops.radius, drops.gamma_shape)
+        case "rain":
+            return sizes_of.MarshallPalmer(drops.rain_mm_h)
+        case "cloud":
+            return sizes_of.Deirmendjian(drops.cloud)
+        case "measured":
+            assert drops.spectrum is not None
+            return read_spectrum(drops.spectrum, drops.spectrum_time)
+        case _:
+            return (
+                sizes_of.Gaussian(drops.radius, drops.spread) if drops.spread > 0.0 else sizes_of.Single(drops.radius)
+            )
+
+
+def _depth(drops: Drops, sizes: SizeDistribution) -> float:
+    """Return the optical depth: as given, or 2π ⟨r²⟩ · number · path, extinction being twice the area of large drops."""
+    if drops.path_m is None:
+        return drops.optical_depth
+    if drops.concentration_per_m3 is not None:
+        number = drops.concentration_per_m3
+    else:
+        assert drops.liquid_water_g_m3 is not None
+        number = drops.liquid_water_g_m3 * 1e-3 / (WATER_DENSITY * 4.0 / 3.0 * np.pi * float(sizes.moment(3)))
+    return 2.0 * np.pi * float(sizes.moment(2)) * number * drops.path_m
+
+
+def _amount(particles: Drops | Crystals, optical_depth: float) -> Callable[[FloatArray], FloatArray]:
     if particles.place == "curtain":
-        return partial(curtain, optical_depth=particles.optical_depth, below_horizon=particles.below_horizon)
-    return partial(layer, optical_depth=particles.optical_depth)
+        return partial(curtain, optical_depth=optical_depth, below_horizon=particles.below_horizon)
+    return partial(layer, optical_depth=optical_depth)
 
 
 def _directions(scene: Scene, source: Source) -> Directions:

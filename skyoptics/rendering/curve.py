@@ -8,15 +8,17 @@ to the scattering plane, intensity_error (one standard error), index (real, at t
 from __future__ import annotations
 
 import json
+import sys
 from collections.abc import Callable, Iterator
 from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 
+from skyoptics.errors import DomainError
 from skyoptics.light.disc import sun_disc
 from skyoptics.materials import index as material
 from skyoptics.optics.axisymmetric import over_disc
@@ -24,7 +26,7 @@ from skyoptics.optics.bins import Bins
 from skyoptics.optics.table import ScatteringTable
 from skyoptics.rendering.run import usable_cores
 from skyoptics.rendering.scatter import QUALITY, Progress, silent
-from skyoptics.units import CELSIUS_ZERO, DEG, NM, UM
+from skyoptics.units import CELSIUS_ZERO, DEG, NM, UM, FloatArray
 
 COLUMNS = ("wavelength_nm", "angle_deg", "intensity", "polarization", "intensity_error", "index")
 
@@ -35,6 +37,7 @@ class DropCurve:
 
     radius_um: float = 500.0
     method: str = "rays"
+    spread: float = 0.0
     wavelength_nm: tuple[float, ...] = (450.0, 550.0, 650.0)
     temperature_c: float = 20.0
     index: float | None = None
@@ -82,7 +85,7 @@ class Curve:
 
 
 def drop(asked: DropCurve, progress: Progress = silent) -> Curve:
-    """Return the curve of a drop by ray optics.
+    """Return the curve of drops by rays or waves.
 
     Parameters
     ----------
@@ -96,7 +99,8 @@ def drop(asked: DropCurve, progress: Progress = silent) -> Curve:
     DomainError
         If the physics refuses a value.
     """
-    from skyoptics.droplets import angles, geometric
+    from skyoptics.droplets import angles, geometric, waves
+    from skyoptics.droplets.sizes import Gaussian, Single
 
     bins = Bins.lines(np.array(asked.wavelength_nm) * NM)
     if asked.index is not None:
@@ -104,22 +108,53 @@ def drop(asked: DropCurve, progress: Progress = silent) -> Curve:
     else:
         law = material.water(asked.temperature_c + CELSIUS_ZERO, asked.medium)
     edges = angles.uniform_edges(asked.step_deg * DEG)
-    with _threads(asked.threads) as executor:
-        whole = geometric.scattering_table(
-            law,
-            asked.radius_um * UM,
-            bins,
-            edges=edges,
-            seed=asked.seed,
-            relative_error=QUALITY[asked.quality],
-            executor=executor,
-            progress=lambda done, total: progress("tracing", done, total),
+    radius = asked.radius_um * UM
+    sizes = Gaussian(radius, asked.spread) if asked.spread > 0.0 else Single(radius)
+    method, reason = asked.method, "asked for"
+    if method == "auto":
+        method, reason = waves.choose_method(sizes, law, bins, asked.orders)
+    if method == "mie" and asked.orders is not None:
+        raise DomainError(
+            "Mie theory does not part the light by order; take --method rays or airy, or leave --orders out"
         )
+    target = QUALITY[asked.quality]
+    with _threads(asked.threads) as executor:
+        shared: dict[str, Any] = {
+            "seed": asked.seed,
+            "executor": executor,
+            "progress": lambda done, total: progress("working out the curve", done, total),
+        }
+        if method == "rays":
+            whole = geometric.scattering_table(law, radius, bins, edges=edges, relative_error=target, **shared)
+        else:
+            whole = waves.scattering_table(sizes, law, bins, method=method, angles=edges, tolerance=target, **shared)
     orders = tuple(range(11)) if asked.orders is None else asked.orders
-    table = whole.select([str(order) for order in orders]).total()
-    report = {"method": asked.method, "particle": "drop", "radius_um": asked.radius_um, "orders": list(orders)}
-    report["energy_by_order"] = whole.report["energy"]
+    table = (
+        whole.select([str(order) for order in orders]).total() if "2" in whole.parts else _in_bins(whole.total(), edges)
+    )
+    report: dict[str, Any] = {
+        "method": method,
+        "reason": reason,
+        "warnings": list(waves.warnings(method, sizes, law, bins)),
+        "particle": "drop",
+        "radius_um": asked.radius_um,
+        "spread": asked.spread,
+    }
+    if "2" in whole.parts:
+        report["orders"] = list(orders)
+        report["energy_by_order"] = whole.report["energy"]
     return _curve(table, whole, law, bins, asked, report)
+
+
+def _in_bins(table: ScatteringTable, edges: FloatArray) -> ScatteringTable:
+    """Return a table of nodes at bin edges as means over the bins."""
+    return replace(
+        table,
+        angle=0.5 * (edges[1:] + edges[:-1]),
+        elements=0.5 * (table.elements[:, 1:] + table.elements[:, :-1]),
+        error=0.5 * (table.error[:, 1:] + table.error[:, :-1]),
+        edges=edges,
+    )
 
 
 def crystal(asked: CrystalCurve, progress: Progress = silent) -> Curve:
@@ -181,16 +216,15 @@ def _curve(
     if asked.disc:
         table = over_disc(table, sun_disc(bins), table.angle)
     shown = table.elements[0, :, :, 0]
+    for name in ("absorbed", "cut_off", "rays", "relative_error"):
+        if name in whole.report:
+            report[name] = whole.report[name]
     report |= {
         "wavelength_nm": list(asked.wavelength_nm),
         "index": law(bins.centre).real.tolist(),
         "medium": asked.medium if asked.index is None else "as given by --index",
         "disc": asked.disc,
         "asymmetry": whole.asymmetry.tolist(),
-        "absorbed": whole.report["absorbed"],
-        "cut_off": whole.report["cut_off"],
-        "rays": whole.report["rays"],
-        "relative_error": whole.report["relative_error"],
         "brightest_deg": [float(table.angle[row] / DEG) for row in shown.argmax(axis=0)],
         "seed": asked.seed,
     }
@@ -224,6 +258,10 @@ def put_out(curve: Curve, csv: Path | None, as_json: bool, say: Callable[[str], 
     if as_json:
         say(json.dumps(curve.report))
     elif csv is None or str(csv) != "-":
+        for warning in curve.report.get("warnings", ()):
+            sys.stderr.write(f"note: {warning}\n")
+        if "reason" in curve.report:
+            say(f"method {curve.report['method']}: {curve.report['reason']}")
         say("wavelength   index      brightest at   asymmetry")
         rows = zip(
             curve.table.wavelength, curve.index, curve.report["brightest_deg"], curve.table.asymmetry, strict=True

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from skyoptics.errors import ResourceError
-from skyoptics.rendering.build import Job
+from skyoptics.rendering.build import CrystalSheet, DropSheet, Job
 from skyoptics.rendering.scatter import is_table
 
 SHARE = 0.7
@@ -12,6 +12,8 @@ BLOCK = 1 << 15
 """Pixels looked at in one go by one thread."""
 _PROGRAM = 350e6
 """Interpreter, libraries and compiled kernels [byte], measured."""
+_FLAT_TABLE = 250e6
+"""One table of flattened drops while it is made [byte], measured with the default bins."""
 _TABLE = 60e6
 """One stored table and its average over the disc [byte], measured with the default bins."""
 
@@ -30,7 +32,7 @@ def predict(job: Job, threads: int, data: bool) -> int:
     """
     rows, columns = job.directions.shape
     pixels, bands = rows * columns, len(job.bins)
-    films = sum(not is_table(sheet) for sheet in job.sheets)
+    films = sum(isinstance(sheet, CrystalSheet) and not is_table(sheet) for sheet in job.sheets)
     picture = pixels * (12 + 12 + 8)  # XYZ and linear RGB in float32, encoded lines
     radiance = pixels * (4 * bands + 2 * 8) * 2 if data else 0  # the writer copies what it compresses
     blocks = threads * max(BLOCK, columns) * bands * 8 * 7
@@ -39,7 +41,18 @@ def predict(job: Job, threads: int, data: bool) -> int:
     blocks *= components
     noise = pixels * 8 * 10 if films else 0
     flying = 3 * threads * pixels * 4 * components if films else 0
-    return int(_PROGRAM + (len(job.sheets) - films) * _TABLE + picture + radiance + blocks + planes + noise + flying)
+    flat = sum(isinstance(sheet, DropSheet) and not is_table(sheet) for sheet in job.sheets) * len(job.sources)
+    return int(
+        _PROGRAM
+        + (len(job.sheets) - films) * _TABLE
+        + flat * _FLAT_TABLE
+        + picture
+        + radiance
+        + blocks
+        + planes
+        + noise
+        + flying
+    )
 
 
 def check(need: int) -> None:

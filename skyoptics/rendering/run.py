@@ -17,8 +17,8 @@ import skyoptics
 from skyoptics.camera.frame import polariser
 from skyoptics.colour.develop import Developed, develop
 from skyoptics.colour.observer import weights
-from skyoptics.rendering import expose, memory
-from skyoptics.rendering.build import CrystalSheet, Job, build
+from skyoptics.rendering import expose, flat, memory
+from skyoptics.rendering.build import DropSheet, Job, build
 from skyoptics.rendering.caption import cautions, what_to_look_for
 from skyoptics.rendering.scatter import Progress, Sampling, Traced, axisymmetric, find_table, is_table, silent
 from skyoptics.scene.digest import scene_hash
@@ -254,8 +254,11 @@ def _scatter(
             first = axisymmetric(sheet, table, job.sources[0].disc)
             scatterers = tuple(first for _ in job.sources)  # a mirror image has the same disc
             traced.append(how)
+        elif isinstance(sheet, DropSheet):
+            found = [flat.find(sheet, job, source, sampling, executor, progress) for source in job.sources]
+            scatterers = tuple(scatterer for scatterer, _ in found)
+            traced += [how for _, how in found]
         else:
-            assert isinstance(sheet, CrystalSheet)
             films = [expose.begin(sheet, job, sampling.seed, source) for source in job.sources]
             scatterers = tuple(work.scatterer() for work in films)
             works += films

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from concurrent.futures import Executor
-from dataclasses import dataclass
+from dataclasses import dataclass, fields, is_dataclass
 from math import ceil
 from typing import Any, Protocol
 
 import numpy as np
 
+from skyoptics.droplets.sizes import Single
 from skyoptics.kernels import KERNEL_HASH
 from skyoptics.optics.axisymmetric import Axisymmetric, over_disc
 from skyoptics.optics.bins import Bins
@@ -89,7 +90,9 @@ class Traced:
 
 def is_table(sheet: DropSheet | CrystalSheet) -> bool:
     """Return whether a sheet's light depends on the scattering angle alone."""
-    return isinstance(sheet, DropSheet) or sheet.orientation.name == "random"
+    if isinstance(sheet, DropSheet):
+        return sheet.axis_ratios == "round"
+    return sheet.orientation.name == "random"
 
 
 def table_key(sheet: DropSheet | CrystalSheet, job: Job, sampling: Sampling) -> str:
@@ -104,8 +107,10 @@ def table_key(sheet: DropSheet | CrystalSheet, job: Job, sampling: Sampling) -> 
     if isinstance(sheet, DropSheet):
         from skyoptics.droplets import angles
 
-        edges = angles.default_edges(sheet.index, job.bins)
-        return store.trace_key(kind="drops by rays", radius=sheet.radius, edges=edges, **shared)
+        if plain_rays(sheet):
+            edges = angles.default_edges(sheet.index, job.bins)
+            return store.trace_key(kind="drops by rays", radius=sheet.radius, edges=edges, **shared)
+        return store.trace_key(kind="drops by waves", method=_method(sheet, job), sizes=identity(sheet.sizes), **shared)
     return store.trace_key(
         kind="random crystals",
         count=CRYSTAL_ANGLES,
@@ -115,9 +120,35 @@ def table_key(sheet: DropSheet | CrystalSheet, job: Job, sampling: Sampling) -> 
     )
 
 
+def plain_rays(sheet: DropSheet) -> bool:
+    """Return whether a sheet is drops of one size by ray optics, which need no average over sizes."""
+    return sheet.method == "rays" and isinstance(sheet.sizes, Single)
+
+
+def _method(sheet: DropSheet, job: Job) -> str:
+    """Return the method in force, "auto" decided."""
+    if sheet.method != "auto":
+        return sheet.method
+    from skyoptics.droplets import waves
+
+    orders = None if sheet.orders == tuple(range(11)) else sheet.orders
+    return waves.choose_method(sheet.sizes, sheet.index, job.bins, orders).method
+
+
+def identity(sizes: Any) -> Any:
+    """Return what tells size distributions apart, in JSON types: names and values of fields, all the way down."""
+    if is_dataclass(sizes):
+        return [type(sizes).__name__, *(identity(getattr(sizes, field.name)) for field in fields(sizes))]
+    if isinstance(sizes, np.ndarray):
+        return sizes.tolist()
+    return sizes if isinstance(sizes, str | int | float | bool | None) else repr(sizes)
+
+
 def least_rays(sheet: DropSheet | CrystalSheet, bins: Bins) -> int:
     """Return the rays that a new table takes at least."""
     if isinstance(sheet, DropSheet):
+        if sheet.method == "mie":
+            return 0
         from skyoptics.droplets import geometric
         from skyoptics.kernels import sphere
 
@@ -156,9 +187,11 @@ def find_table(
         table = _trace_table(sheet, job, sampling, executor, progress)
         store.keep(key, table)
     report = table.report
-    about = {f"{name}_at_most": max(report[name]) for name in ("relative_error", "absorbed", "cut_off")}
-    about["target_reached"] = sampling.rays is not None or report["target_reached"]
-    rays = int(report["rays"])
+    names = ("relative_error", "absorbed", "cut_off")
+    about: dict[str, Any] = {f"{name}_at_most": max(report[name]) for name in names if name in report}
+    about["target_reached"] = sampling.rays is not None or report.get("target_reached", True)
+    about |= {name: report[name] for name in ("method", "reason", "warnings", "error") if name in report}
+    rays = int(report.get("rays", 0))
     return table, Traced(sheet.name, key, reused, 0 if reused else rays, rays, about)
 
 
@@ -178,6 +211,13 @@ def _trace_table(
 
         least, batch = table.LEAST_BATCHES, table.BATCH
     shared: dict[str, Any] = {"seed": sampling.seed, "executor": executor, "progress": tell}
+    if isinstance(sheet, DropSheet) and not plain_rays(sheet):
+        from skyoptics.droplets import waves
+
+        method = _method(sheet, job)
+        return waves.scattering_table(
+            sheet.sizes, sheet.index, job.bins, method=method, tolerance=2.0 * sampling.target, **shared
+        )
     if sampling.rays is None:
         shared["relative_error"] = sampling.target * (1.0 if isinstance(sheet, DropSheet) else CRYSTAL_TABLE_ERROR)
     else:  # a target that no number of batches reaches, so that the number given rules
@@ -190,9 +230,17 @@ def _trace_table(
 
 
 def axisymmetric(sheet: DropSheet | CrystalSheet, table: ScatteringTable, disc: Disc) -> Axisymmetric:
-    """Return a sheet's scatterer from its ray table, under a disc.
+    """Return a sheet's scatterer from its table, under a disc.
 
-    The traced half of the extinction carries the table's light; the other half is diffraction, which rays leave out.
+    The traced half of the extinction carries a ray table's light; the other half is diffraction, which rays leave out. A
+    wave table says itself which share of the extinction at 550 nm it scatters.
     """
-    shown = table.select([str(order) for order in sheet.orders]) if isinstance(sheet, DropSheet) else table
-    return Axisymmetric(over_disc(shown.total(), disc), 0.5 * np.asarray(table.albedo))
+    by_order = isinstance(sheet, DropSheet) and "2" in table.parts
+    shown = table.select([str(order) for order in sheet.orders]) if by_order else table  # type: ignore[union-attr]
+    if "reference_extinction_m2" in table.report:
+        from skyoptics.droplets import waves
+
+        share = waves.shares(table)[0]
+    else:
+        share = 0.5 * np.asarray(table.albedo)
+    return Axisymmetric(over_disc(shown.total(), disc), share)

@@ -47,6 +47,23 @@ def trace_key(**parts: Any) -> str:
 
 def find(key: str) -> ScatteringTable | None:
     """Return a stored table, or None where there is none that can be used."""
+    found = find_arrays(key)
+    if found is None:
+        return None
+    arrays, about = found
+    return ScatteringTable(**arrays, parts=tuple(about["parts"]), report=about["report"])
+
+
+def keep(key: str, table: ScatteringTable) -> bool:
+    """Store a table; a full disk or a read-only folder is no reason to fail, so return whether it was kept."""
+    arrays = {name: getattr(table, name) for name in _ARRAYS}
+    if table.edges is not None:
+        arrays["edges"] = table.edges
+    return keep_arrays(key, arrays, {"parts": table.parts, "report": table.report})
+
+
+def find_arrays(key: str) -> tuple[dict[str, Any], dict[str, Any]] | None:
+    """Return stored arrays and what is said about them, or None where there is nothing that can be used."""
     path = folder() / f"{key}.npz"
     if not path.exists():
         return None
@@ -55,9 +72,7 @@ def find(key: str) -> ScatteringTable | None:
             about = json.loads(str(stored["about"]))
             if about["key"] != key or about["format"] != FORMAT:
                 raise ValueError("it belongs to another job")
-            arrays = {name: stored[name] for name in _ARRAYS}
-            edges = stored.get("edges")
-        return ScatteringTable(**arrays, parts=tuple(about["parts"]), edges=edges, report=about["report"])
+            return {name: stored[name] for name in stored.files if name != "about"}, about
     except Exception as error:  # whatever is in the file: it is only a copy
         aside = path.with_suffix(".broken")
         sys.stderr.write(f"set aside a stored table that cannot be used ({error}); it is traced anew\n")
@@ -65,18 +80,14 @@ def find(key: str) -> ScatteringTable | None:
         return None
 
 
-def keep(key: str, table: ScatteringTable) -> bool:
-    """Store a table; a full disk or a read-only folder is no reason to fail, so return whether it was kept."""
+def keep_arrays(key: str, arrays: dict[str, Any], about: dict[str, Any]) -> bool:
+    """Store arrays and what is said about them (JSON types); return whether they were kept."""
     path = folder() / f"{key}.npz"
     aside = path.with_name(f"{path.name}.{uuid4().hex}.part")
-    about = json.dumps({"key": key, "format": FORMAT, "parts": table.parts, "report": table.report})
-    arrays = {name: getattr(table, name) for name in _ARRAYS}
-    if table.edges is not None:
-        arrays["edges"] = table.edges
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
         with aside.open("wb") as file:
-            np.savez(file, about=np.array(about), **arrays)
+            np.savez(file, about=np.array(json.dumps({"key": key, "format": FORMAT, **about})), **arrays)
         aside.replace(path)
     except OSError:
         return False

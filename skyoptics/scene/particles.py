@@ -67,6 +67,53 @@ class Drops(Particles):
         AfterValidator(distinct),
         AfterValidator(lambda orders: tuple(sorted(orders))),
     ] = ORDERS
+    method: Annotated[
+        Literal["rays", "mie", "airy", "auto"],
+        note("Ray optics, Lorenz-Mie, Airy's theory of the primary and secondary bow, or whichever fits the drops"),
+    ] = "rays"
+    sizes: Annotated[
+        Literal["gaussian", "lognormal", "effective", "gamma", "rain", "cloud", "measured"],
+        note(
+            "How sizes are spread: gaussian and lognormal about radius_um by spread; effective radius and variance; gamma by "
+            "mean volume radius and shape; rain by rain rate; a cloud model; a measured spectrum"
+        ),
+    ] = "gaussian"
+    spread: Annotated[
+        float,
+        number(0, 0.5, "", "Relative standard deviation of the radius (gaussian) or of its logarithm (lognormal)"),
+    ] = 0.0
+    effective_variance: Annotated[float, number(0.001, 0.49, "", 'With sizes = "effective"')] = 0.1
+    gamma_shape: Annotated[float, number(-0.9, 20, "", 'Exponent µ with sizes = "gamma"')] = 3.0
+    rain_mm_h: Annotated[float, number(0.1, 200, "mm/h", 'Rain rate with sizes = "rain" (Marshall & Palmer)')] = 5.0
+    cloud: Annotated[Literal["C1", "C2", "C3"], note('Cloud model with sizes = "cloud" (Deirmendjian)')] = "C1"
+    spectrum: Annotated[
+        str | None,
+        text(1000, 'CSV file with sizes = "measured", its path counted from the scene file'),
+        AfterValidator(_beside_scene),
+    ] = None
+    spectrum_time: Annotated[str | None, text(100, "Which row in time of the spectrum; left out, all are averaged")] = (
+        None
+    )
+    axis_ratios: Annotated[
+        Literal["round", "thurai2007", "brandes2002", "beard-chuang1987"],
+        note(
+            "Round drops, or the law by which they flatten with size as they fall; flattened drops are shown by rays with "
+            "Airy fringes, whatever the method, up to p = 7"
+        ),
+    ] = "round"
+    canting_deg: Annotated[
+        float,
+        number(0, 30, "degrees", "Standard deviation of each of the two components of the tilt of flattened drops"),
+    ] = 0.0
+    liquid_water_g_m3: Annotated[
+        float | None, number(1e-6, 100, "g/m³", "Liquid water content; with path_m it gives the optical depth")
+    ] = None
+    concentration_per_m3: Annotated[
+        float | None, number(1e-3, 1e12, "1/m³", "Number of drops in a volume; with path_m it gives the optical depth")
+    ] = None
+    path_m: Annotated[
+        float | None, number(0.01, 1e6, "m", "Depth of the curtain along the line of sight, or thickness of the layer")
+    ] = None
     place: Annotated[
         Literal["curtain", "layer"],
         note("A curtain has the same optical depth in every direction of view, a layer is a level sheet overhead"),
@@ -79,6 +126,11 @@ class Drops(Particles):
         return self.radius_um * UM
 
     @property
+    def canting(self) -> float:
+        """Canting spread [rad]."""
+        return self.canting_deg * DEG
+
+    @property
     def temperature(self) -> float:
         """Temperature [K]."""
         return self.temperature_c + CELSIUS_ZERO
@@ -87,6 +139,22 @@ class Drops(Particles):
     def conflicts(cls, values: Mapping[str, Any]) -> Iterator[Conflict]:
         """Yield conflicts between index and index_table, and between below_horizon and place."""
         yield from _shared_conflicts(values)
+        if values.get("sizes") == "measured" and "spectrum" in values and values["spectrum"] is None:
+            yield "spectrum", 'is missing; sizes = "measured" needs a CSV file'
+        if values.get("sizes") == "lognormal" and values.get("spread") == 0.0:
+            yield "spread", 'must lie above 0 with sizes = "lognormal"'
+        given = [key for key in ("liquid_water_g_m3", "concentration_per_m3") if values.get(key) is not None]
+        if len(given) == 2:
+            yield "concentration_per_m3", "cannot stand beside liquid_water_g_m3; keep one of the two"
+        if given and "path_m" in values and values["path_m"] is None:
+            yield "path_m", f"is missing; {given[0]} needs it for an optical depth"
+        if not given and values.get("path_m") is not None:
+            yield "path_m", "needs liquid_water_g_m3 or concentration_per_m3 beside it"
+        if values.get("method") == "mie" and "orders" in values and values["orders"] != ORDERS:
+            yield (
+                "orders",
+                'Mie theory does not part the light by order; take method = "rays" or "airy", or leave orders out',
+            )
 
 
 class Crystals(Particles):
