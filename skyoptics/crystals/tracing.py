@@ -9,7 +9,7 @@ between batches is an honest error.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -75,6 +75,30 @@ class Tally:
 
 
 @dataclass(frozen=True, eq=False)
+class Guide:
+    """Where rays are born: shares of cells of the unit cube of Sobol points; made by `skyoptics.crystals.guide.learn`.
+
+    Parameters
+    ----------
+    sums : ndarray, shape (cells + 1,)
+        Running sum of the cells' shares of the rays, from 0 to 1, each share above 0.
+    boxes : ndarray, shape (cells * (1 + 2 k),)
+        Of each cell: volume ÷ share, by which its rays' power is multiplied so that every expectation stays; lower corner;
+        width.
+    dimensions : ndarray, shape (k,)
+        Dimensions of the Sobol points that the cells divide.
+    """
+
+    sums: FloatArray = field(default_factory=lambda: np.array([0.0, 1.0]))
+    boxes: Float32Array = field(default_factory=lambda: np.ones(1, dtype=np.float32))
+    dimensions: Any = field(default_factory=lambda: np.zeros(0, dtype=np.int64))
+
+
+EVENLY = Guide()
+"""Plain sampling."""
+
+
+@dataclass(frozen=True, eq=False)
 class Prepared:
     """Kernel arguments of one kind of crystal in one spectral bin under one source; made by `prepare`."""
 
@@ -83,6 +107,7 @@ class Prepared:
     spectral_bin: int
     mean_incident: float
     """Expected incident power of a ray: the extinction towards the source ÷ the reference."""
+    guide: Guide = EVENLY
 
 
 @dataclass(frozen=True, eq=False)
@@ -101,6 +126,8 @@ class ExitList:
         Number of the ray in its batch; number of faces met.
     path : ndarray, shape (m,)
         Path code, see `skyoptics.kernels.lanes.path_faces`.
+    cell : ndarray, shape (m,)
+        Row · columns + column of the grid given, else 0.
     """
 
     direction: Float32Array
@@ -110,6 +137,7 @@ class ExitList:
     ray: Any
     hits: Any
     path: Any
+    cell: Any
 
 
 def prepare(
@@ -124,6 +152,7 @@ def prepare(
     size: float = 0.0,
     spectral_bin: int = 0,
     cutoff: float = CUTOFF,
+    guide: Guide | None = None,
 ) -> Prepared:
     """Return what the batches of one spectral bin have in common.
 
@@ -149,6 +178,8 @@ def prepare(
         Number of the bin, part of the random key.
     cutoff : float, optional
         Power below which rays play roulette, relative to a mean ray of this batch.
+    guide : Guide, optional
+        Where rays are born, for all bins; default evenly.
 
     Raises
     ------
@@ -193,7 +224,7 @@ def prepare(
         np.asarray(stokes, dtype=np.float32),
         np.float32(cutoff * mean_incident),
     )
-    return Prepared(arguments, used, spectral_bin, mean_incident)
+    return Prepared(arguments, used, spectral_bin, mean_incident, guide or EVENLY)
 
 
 def trace_plane(
@@ -266,6 +297,8 @@ def trace_angles(
     """
     if rays % (4 * CHUNK):
         raise DomainError(f"rays of an angle table are a multiple of {4 * CHUNK}; got {rays}")
+    if len(prepared.guide.dimensions):
+        raise DomainError("an angle table has no frame to guide rays into")  # and its shares of rays go by number
     table = np.zeros(count * ANGLE_SUMS)
     grid = np.array([4.0 if polarised else 1.0, float(count)], dtype=np.float32)
     tally = _run(prepared, seed, batch, rays, ANGLES, grid, table)
@@ -273,13 +306,22 @@ def trace_angles(
 
 
 def trace_exits(
-    prepared: Prepared, seed: int, batch: int, rays: int, capacity: int | None = None
+    prepared: Prepared,
+    seed: int,
+    batch: int,
+    rays: int,
+    capacity: int | None = None,
+    directions: Float32Array | None = None,
 ) -> tuple[ExitList, Tally]:
-    """Trace one batch and return every exit with power, at most `capacity` (default 16 a ray) of them."""
+    """Trace one batch and return every exit with power, at most `capacity` (default 16 a ray) of them.
+
+    With `directions` (packed) only exits that fall on that grid are listed.
+    """
     capacity = 16 * rays if capacity is None else capacity
     values = np.zeros((capacity, EXIT_COLUMNS), dtype=np.float32)
     numbers = np.zeros((capacity, EXIT_CODES), dtype=np.uint32)
-    tally, exits = _call(prepared, seed, batch, rays, EXITS, np.zeros(2, np.float32), np.zeros(1), values, numbers)
+    grid = np.zeros(2, np.float32) if directions is None else np.asarray(directions, dtype=np.float32)
+    tally, exits = _call(prepared, seed, batch, rays, EXITS, grid, np.zeros(1, np.float32), values, numbers)
     if exits > capacity:
         raise DomainError(f"{exits:.0f} exits do not fit a list of {capacity}; ask for fewer rays or more room")
     values, numbers = values[: int(exits)], numbers[: int(exits)]
@@ -287,10 +329,8 @@ def trace_exits(
     path = np.where(
         long, np.int64((1 << 60) - 1), numbers[:, 3].astype(np.int64) << 30 | numbers[:, 2].astype(np.int64)
     )
-    return (
-        ExitList(values[:, 0:3], values[:, 10:13], values[:, 3:7], values[:, 7:10], numbers[:, 0], numbers[:, 1], path),
-        tally,
-    )
+    parts = (values[:, 0:3], values[:, 10:13], values[:, 3:7], values[:, 7:10], numbers[:, 0], numbers[:, 1])
+    return ExitList(*parts, path, numbers[:, 4]), tally
 
 
 def plain_plane(
@@ -370,6 +410,7 @@ def _call(
     tally = np.zeros(TALLIES)
     key = batch_key(seed, prepared.spectral_bin, batch)
     arguments: tuple[Any, ...] = (*prepared.arguments, *key, rays, prepared.used, REVERSED_NUMBERS, CHUNK_TABLE)
+    arguments += (prepared.guide.sums, prepared.guide.boxes, prepared.guide.dimensions)
     arguments += (sink, grid, plane, values, numbers, tally)
     trace_crystals(*arguments)
     entered, incident, scattered, absorbed, gain, below, segments, cosine, forward, exits = (float(x) for x in tally)

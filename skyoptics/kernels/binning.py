@@ -40,8 +40,8 @@ _TINY = np.float32(1e-24)
 
 EXIT_COLUMNS = 14
 """Columns of the exit list: direction (3), Stokes (4), e⊥ (3), direction before the crystal (3), 0; all world."""
-EXIT_CODES = 4
-"""Columns of the exit list's whole numbers: ray, faces met, low and high part of the path code."""
+EXIT_CODES = 5
+"""Columns of the exit list's whole numbers: ray, faces met, low and high part of the path code, cell of the grid."""
 
 ANGLE_SUMS = 6
 """P11, P12, P22, P33, P34, P44 of an angle table."""
@@ -141,20 +141,28 @@ def polarisation_share(ray: Any) -> Any:
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def list_exits(
-    state: Float32Array, codes: Uint32Array, n: int, values: Float32Array, numbers: Uint32Array, count: int
+    state: Float32Array,
+    codes: Uint32Array,
+    spots: Uint32Array,
+    n: int,
+    cells: Any,
+    values: Float32Array,
+    numbers: Uint32Array,
+    count: int,
 ) -> int:
     """Append lanes that leave with power to values (capacity, EXIT_COLUMNS), numbers (capacity, EXIT_CODES) uint32.
 
-    Return the number of exits met so far, which may pass the capacity.
+    Of these only the ones whose spot lies below `cells`. Return the number of exits met so far, which may pass the capacity.
     """
     for lane in range(n):
-        if state[EI + lane] <= F0:
+        if state[EI + lane] <= F0 or spots[lane] >= cells:
             continue
         if count < len(values):
             for column, row in enumerate((EX, EY, EZ, EI, EQ, EU, EV, TX, TY, TZ, WX, WY, WZ)):
                 values[count, column] = state[row + lane]
             for column, row in enumerate((RAY, HITS, PATH_LOW, PATH_HIGH)):
                 numbers[count, column] = codes[row + lane]
+            numbers[count, 4] = spots[lane]
         count += 1
     return count
 

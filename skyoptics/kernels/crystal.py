@@ -28,7 +28,7 @@ import numpy as np
 from numba import njit
 
 from skyoptics.kernels.binning import add_angles, add_power, add_stokes, list_exits, polarisation_share
-from skyoptics.kernels.entry import PATCH, enter_chunk
+from skyoptics.kernels.entry import PATCH, enter_chunk, weigh_chunk
 from skyoptics.kernels.lanes import (
     CHUNK,
     CODE_ROWS,
@@ -44,17 +44,21 @@ from skyoptics.kernels.lanes import (
     WIDTH,
     Float32Array,
     FloatArray,
+    Int64Array,
     Uint32Array,
 )
 from skyoptics.kernels.orient import orient_chunk, source_chunk
 from skyoptics.kernels.polyhedron import advance, interface, note_faces, pack, roulette
 from skyoptics.kernels.projection import find_angles, find_pixels, turn_to_world
-from skyoptics.kernels.sobol import DIMENSIONS, scramble_seeds, sobol_chunk
+from skyoptics.kernels.random import uniform
+from skyoptics.kernels.sobol import DIMENSIONS, gather_chunk, scramble_seeds, sobol_chunk
 
 PLANE, STOKES_PLANE, ANGLES, EXITS = 0, 1, 2, 3
 TALLIES = 10
 FLUSH = 64 * CHUNK
 """Rays after which the lanes' float32 sums go to the tally."""
+OFFSET_DIMENSION = 8
+"""Hash dimension of the offset of gathered points (table in `skyoptics.kernels.random`: none of a crystal's uses it)."""
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
@@ -77,6 +81,9 @@ def trace_crystals(
     used: int,
     numbers: Uint32Array,
     table: Uint32Array,
+    cell_sums: FloatArray,
+    cell_boxes: Float32Array,
+    cell_dimensions: Int64Array,
     sink: int,
     grid: Float32Array,
     plane: Any,
@@ -87,7 +94,8 @@ def trace_crystals(
     """Trace `rays` rays (a multiple of CHUNK) into one sink; arguments as in the stages, tally (TALLIES,) is added to.
 
     sink PLANE: plane flat (ny * nx + SPARE,); STOKES_PLANE: the same times 4; ANGLES: flat (nθ * 6,), grid[0] = 1 for
-    unpolarised light only, 4 for all elements, grid[1] = nθ; EXITS: exit_values, exit_numbers.
+    unpolarised light only, 4 for all elements, grid[1] = nθ; EXITS: exit_values, exit_numbers, those alone that fall on grid,
+    if that is one of directions (length 2: all). cell_*: where rays are born, as in `gather_chunk`; without dimensions evenly.
     """
     state = np.zeros(ROWS * STRIDE, dtype=np.float32)
     codes = np.zeros(CODE_ROWS * STRIDE, dtype=np.uint32)
@@ -99,6 +107,10 @@ def trace_crystals(
     sums = np.zeros((len(patches) // PATCH + 1) * CHUNK, dtype=np.float32)
     born_stokes = stokes.copy()
     moments = np.zeros(2)
+    weights = np.ones(CHUNK, dtype=np.float32)
+    guided = len(cell_dimensions) > 0
+    offset = uniform(key_low, key_high, np.uint32(0), np.uint32(OFFSET_DIMENSION))
+    cell = 0
     scramble_seeds(key_low, key_high, seeds)
     level = frame[0:3]
     exits = 0
@@ -108,6 +120,8 @@ def trace_crystals(
         start = n
         while ray < rays and n <= WIDTH - CHUNK:
             sobol_chunk(ray, True, seeds, used, numbers, table, points)
+            if guided:
+                cell = gather_chunk(ray, rays, offset, cell, cell_sums, cell_boxes, cell_dimensions, points, weights)
             born, born_codes = state[n:], codes[n:]
             source_chunk(born, points, frame, radius, disc_table, index_table)
             orient_chunk(born, points, law, inverse_kappa, span)
@@ -116,6 +130,8 @@ def trace_crystals(
                 born_stokes[1] = F1 if share == 2 else F0
                 born_stokes[3] = F1 if share == 3 else F0
             enter_chunk(born, born_codes, ray, points, patches, sums, scale, born_stokes, level)
+            if guided:
+                weigh_chunk(born, weights)
             n += CHUNK
             ray += CHUNK
         if n > start:
@@ -166,7 +182,11 @@ def _leave(
         find_angles(state, spots, n, np.int32(grid[1]))
         add_angles(state, codes, spots, n, np.int32(grid[0]), level, plane, moments)
     else:
-        exits = list_exits(state, codes, n, exit_values, exit_numbers, exits)
+        cells = np.int64(1)
+        if len(grid) > 2:
+            cells = np.int64(grid[1]) * np.int64(grid[2])
+            find_pixels(state, spots, n, grid)
+        exits = list_exits(state, codes, spots, n, cells, exit_values, exit_numbers, exits)
     return exits
 
 

@@ -191,3 +191,22 @@ def enter_chunk(
         state[DY + lane] = dy * inverse + bend * ny
         state[DZ + lane] = dz * inverse + bend * nz
         state[SUM_OUT + lane] = state[SUM_OUT + lane] + state[EI + lane]
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def weigh_chunk(state: Float32Array, weights: Float32Array) -> None:
+    """Multiply the power of CHUNK new rays, and what the outside reflected, by weights (CHUNK,)."""
+    for lane in range(CHUNK):
+        more = weights[lane] - F1
+        state[SUM_IN + lane] = state[SUM_IN + lane] + more * (state[SI + lane] + state[EI + lane])
+        state[SUM_OUT + lane] = state[SUM_OUT + lane] + more * state[EI + lane]
+    for lane in range(CHUNK):
+        weight = weights[lane]
+        state[SI + lane] = weight * state[SI + lane]
+        state[SQ + lane] = weight * state[SQ + lane]
+        state[SU + lane] = weight * state[SU + lane]
+        state[SV + lane] = weight * state[SV + lane]
+        state[EI + lane] = weight * state[EI + lane]
+        state[EQ + lane] = weight * state[EQ + lane]
+        state[EU + lane] = weight * state[EU + lane]
+        state[EV + lane] = weight * state[EV + lane]

@@ -28,6 +28,7 @@ from numpy.typing import NDArray
 Float32Array: TypeAlias = NDArray[np.float32]
 Uint32Array: TypeAlias = NDArray[np.uint32]
 FloatArray: TypeAlias = NDArray[np.float64]
+Int64Array: TypeAlias = NDArray[np.int64]
 
 WIDTH = 128
 """Lanes of a pool; 256 lanes of 45 rows fill 46 kB."""

@@ -10,6 +10,9 @@ Because i XOR (i >> 1) is linear over bits, the points of a chunk of 2**m consec
 Owen's scramble is nested: each bit is flipped by a hash of the bits above it. On bit-reversed numbers that is any mixing
 in which bits only reach upwards: x + seed, x XOR x · even, x · odd (Laine & Karras, Comput. Graph. Forum 30, 1161 (2011);
 Burley, J. Comput. Graph. Tech. 9(4), 1 (2020)). Direction numbers are kept reversed, so only one reversal is left.
+
+Points may be gathered in cells of the unit cube (`gather_chunk`): importance sampling by a density that is constant in each
+cell.
 """
 
 from __future__ import annotations
@@ -19,7 +22,7 @@ from typing import Any
 import numpy as np
 from numba import njit
 
-from skyoptics.kernels.lanes import CHUNK, Float32Array, Uint32Array
+from skyoptics.kernels.lanes import CHUNK, Float32Array, FloatArray, Int64Array, Uint32Array
 from skyoptics.kernels.random import mix32
 
 DIMENSIONS = 12
@@ -87,6 +90,7 @@ CHUNK_TABLE = chunk_table()
 
 _STEP = np.float32(2.0**-23)
 _MIDDLE = np.float32(2.0**-24)
+_LAST = np.float32(1.0 - 2.0**-24)
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
@@ -137,3 +141,40 @@ def sobol_chunk(
             x = np.uint32(((x >> np.uint32(8)) & np.uint32(0x00FF00FF)) | ((x & np.uint32(0x00FF00FF)) << np.uint32(8)))
             x = np.uint32((x >> np.uint32(16)) | (x << np.uint32(16)))
             out[start + lane] = np.float32(np.int32(x >> np.uint32(9))) * _STEP + _MIDDLE
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def gather_chunk(
+    first: int,
+    rays: int,
+    offset: float,
+    cell: int,
+    sums: FloatArray,
+    boxes: Float32Array,
+    dimensions: Int64Array,
+    points: Float32Array,
+    weights: Float32Array,
+) -> int:
+    """Move points first … first + CHUNK − 1 of a batch of `rays` into cells; return the cell of the last one.
+
+    Point i goes to the cell whose interval of the running sum holds (i + offset) / rays: with offset even in 0 … 1 every
+    cell gets the points due to it, to within one (systematic sampling, Madow & Madow, Ann. Math. Stat. 15, 1 (1944)), and
+    neighbours in number share a cell, so that nothing is searched. sums (cells + 1,): running sum of the cells' shares, 0
+    first; boxes, flat (cells * (1 + 2 k),): weight (volume ÷ share), then lower corner and width in each of `dimensions`
+    (k,); cell: of the point before; points as from `sobol_chunk`, moved in place; weights (CHUNK,).
+    """
+    k = len(dimensions)
+    size = 1 + 2 * k
+    last = len(sums) - 2
+    per_ray = 1.0 / rays
+    for lane in range(CHUNK):
+        place = (first + lane + offset) * per_ray
+        while cell < last and sums[cell + 1] <= place:
+            cell += 1
+        box = cell * size
+        weights[lane] = boxes[box]
+        for d in range(k):
+            spot = dimensions[d] * CHUNK + lane
+            x = boxes[box + 1 + d] + points[spot] * boxes[box + 1 + k + d]
+            points[spot] = x if x < _LAST else _LAST
+    return cell

@@ -11,7 +11,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import Executor
 from dataclasses import dataclass
-from functools import partial
+from functools import cached_property, partial
 from math import ceil, sqrt
 from typing import Any
 
@@ -19,8 +19,9 @@ import numpy as np
 
 from skyoptics.colour.display import exposure_scale, roll_off
 from skyoptics.colour.observer import weights
+from skyoptics.crystals import guide
 from skyoptics.crystals.orientations import projected_area
-from skyoptics.crystals.tracing import Prepared, prepare, trace_plane
+from skyoptics.crystals.tracing import Guide, Prepared, prepare, trace_plane
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.kernels import KERNEL_HASH
 from skyoptics.light import spectrum
@@ -52,9 +53,14 @@ class Work:
     sheet: CrystalSheet
     source: Source
     film: Film
-    prepared: tuple[Prepared, ...]
+    make: Callable[[], tuple[Prepared, ...]]
     packed: Float32Array
     seed: int
+
+    @cached_property
+    def prepared(self) -> tuple[Prepared, ...]:
+        """What the batches of each bin have in common, the guide into a narrow frame learnt; made when first asked for."""
+        return self.make()
 
     def trace(
         self, rounds: int, executor: Executor | None, progress: Progress, pause: Callable[[], None]
@@ -71,9 +77,9 @@ class Work:
         ahead = 2 * getattr(executor, "_max_workers", 2)
         for (band, k), (plane, tally) in zip(missing, in_order(_batch, tasks, executor, ahead), strict=True):
             self.film.add(band, plane, tally)
-            progress(f"tracing {self.sheet.name}", int(self.film.counts.sum()), rounds * len(self.prepared))
+            progress(f"tracing {self.sheet.name}", int(self.film.counts.sum()), rounds * len(self.film.rays))
             pause()
-            if band == len(self.prepared) - 1:
+            if band == len(self.film.rays) - 1:
                 yield k + 1
 
     def scatterer(self) -> FilmScatterer:
@@ -133,14 +139,16 @@ def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None
         disc=np.append(source.disc.darkening.ravel(), source.disc.radius),
         directions=packed,
         stokes=np.append(source.stokes.ravel(), float(job.stokes)),
+        guide=guide.parameters(),
         bins=bins.edges,
         rays=rays,
         seed=seed,
         kernels=KERNEL_HASH,
     )
     reference = weights(bins)[:, 1] * spectrum.irradiance(bins)
-    prepared = tuple(
-        prepare(
+
+    def ready(row: int, edges: FloatArray, found: Guide | None = None) -> Prepared:
+        return prepare(
             sheet.shape,
             sheet.orientation,
             sheet.index,
@@ -151,11 +159,16 @@ def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None
             stokes=source.stokes[row],
             size=sheet.diameter,
             spectral_bin=row,
+            guide=found,
         )
-        for row, edges in enumerate(bins.edges)
-    )
+
+    def all_bins() -> tuple[Prepared, ...]:
+        span = np.array([bins.edges.min(), bins.edges.max()])
+        found = guide.learn(ready(len(bins) // 2, span), packed, seed)
+        return tuple(ready(row, edges, found) for row, edges in enumerate(bins.edges))
+
     blank = Film.blank(key, rays, reference, (*grid.shape, 4) if job.stokes else grid.shape)
-    return Work(sheet, source, films.find(blank), prepared, packed, seed)
+    return Work(sheet, source, films.find(blank), all_bins, packed, seed)
 
 
 def trace(

@@ -110,7 +110,9 @@ def table_key(sheet: DropSheet | CrystalSheet, job: Job, sampling: Sampling) -> 
         if plain_rays(sheet):
             edges = angles.default_edges(sheet.index, job.bins)
             return store.trace_key(kind="drops by rays", radius=sheet.radius, edges=edges, **shared)
-        return store.trace_key(kind="drops by waves", method=_method(sheet, job), sizes=identity(sheet.sizes), **shared)
+        return store.trace_key(
+            kind="drops by waves", method=_choice(sheet, job)[0], sizes=identity(sheet.sizes), **shared
+        )
     return store.trace_key(
         kind="random crystals",
         count=CRYSTAL_ANGLES,
@@ -125,14 +127,14 @@ def plain_rays(sheet: DropSheet) -> bool:
     return sheet.method == "rays" and isinstance(sheet.sizes, Single)
 
 
-def _method(sheet: DropSheet, job: Job) -> str:
-    """Return the method in force, "auto" decided."""
+def _choice(sheet: DropSheet, job: Job) -> tuple[str, str]:
+    """Return the method in force, "auto" decided, and why."""
     if sheet.method != "auto":
-        return sheet.method
+        return sheet.method, "asked for"
     from skyoptics.droplets import waves
 
     orders = None if sheet.orders == tuple(range(11)) else sheet.orders
-    return waves.choose_method(sheet.sizes, sheet.index, job.bins, orders).method
+    return waves.choose_method(sheet.sizes, sheet.index, job.bins, orders)
 
 
 def identity(sizes: Any) -> Any:
@@ -214,10 +216,12 @@ def _trace_table(
     if isinstance(sheet, DropSheet) and not plain_rays(sheet):
         from skyoptics.droplets import waves
 
-        method = _method(sheet, job)
-        return waves.scattering_table(
+        method, reason = _choice(sheet, job)
+        found = waves.scattering_table(
             sheet.sizes, sheet.index, job.bins, method=method, tolerance=2.0 * sampling.target, **shared
         )
+        found.report["reason"] = reason
+        return found
     if sampling.rays is None:
         shared["relative_error"] = sampling.target * (1.0 if isinstance(sheet, DropSheet) else CRYSTAL_TABLE_ERROR)
     else:  # a target that no number of batches reaches, so that the number given rules
