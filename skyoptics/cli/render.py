@@ -70,6 +70,8 @@ def command(
     words = _command(scene, overrides, wanted, settings)
     with progress.shown() as tell:
         result = render(described, str(scene), settings, tell, data, wanted.preview, stokes)
+    if changed := output.traced_otherwise(wanted, result.report):
+        click.echo(f"note: {changed}", err=True)
     files = output.write(result, described, wanted, words)
     for caution in result.report["cautions"]:
         click.echo(f"caution: {caution}", err=True)

@@ -10,7 +10,7 @@ SHARE = 0.7
 """Share of the free memory that a job may take."""
 BLOCK = 1 << 15
 """Pixels looked at in one go by one thread."""
-_PROGRAM = 350e6
+_PROGRAM = 220e6
 """Interpreter, libraries and compiled kernels [byte], measured."""
 _FLAT_TABLE = 250e6
 """One table of flattened drops while it is made [byte], measured with the default bins."""
@@ -33,13 +33,13 @@ def predict(job: Job, threads: int, data: bool) -> int:
     rows, columns = job.directions.shape
     pixels, bands = rows * columns, len(job.bins)
     films = sum(isinstance(sheet, CrystalSheet) and not is_table(sheet) for sheet in job.sheets)
-    picture = pixels * (12 + 12 + 8)  # XYZ and linear RGB in float32, encoded lines
-    radiance = pixels * (4 * bands + 2 * 8) * 2 if data else 0  # the writer copies what it compresses
-    blocks = threads * max(BLOCK, columns) * bands * 8 * 7
+    picture = pixels * (12 + 12)  # XYZ and linear RGB in float32
+    radiance = pixels * (4 * bands + 2 * 8) if data else 0
+    blocks = threads * max(BLOCK, columns) * bands * 8 * 4
     components = 4 if job.stokes else 1
     planes = films * len(job.sources) * pixels * (4 * bands * components + 8)
     blocks *= components
-    noise = pixels * 8 * 10 if films else 0
+    noise = pixels * 8 * 17 if films else 0
     flying = 3 * threads * pixels * 4 * components if films else 0
     flat = sum(isinstance(sheet, DropSheet) and not is_table(sheet) for sheet in job.sheets) * len(job.sources)
     return int(

@@ -147,6 +147,25 @@ def write(result: Result, scene: Scene, wanted: Wanted, command: Sequence[str]) 
     return files
 
 
+def traced_otherwise(wanted: Wanted, report: Mapping[str, Any]) -> str | None:
+    """Return words where an earlier picture of the same name rests on other traces, None where it does not.
+
+    What was traced before stays stored under its own trace key; nothing of it goes into the new picture.
+    """
+    try:
+        earlier = json.loads(wanted.path("json").read_text(encoding="utf-8"))
+        before = {sheet["trace_key"] for sheet in earlier["sheets"]}
+    except (OSError, ValueError, KeyError, TypeError):
+        return None
+    now = {sheet["trace_key"] for sheet in report["sheets"]}
+    if now <= before or not before:
+        return None
+    return (
+        f"particles, light, camera or seed have changed since {wanted.name}.json was written: what was traced then is not "
+        "used (it stays stored, should you go back)"
+    )
+
+
 def noise_picture(result: Result) -> Float32Array:
     """Return a grey picture of the error of displayed lightness, white = 5 % and more, linear, shape (ny, nx, 3).
 
