@@ -19,6 +19,7 @@ COMMANDS = {
     "render": ("skyoptics.cli.render", "Scene file to picture and report."),
     "check": ("skyoptics.cli.check", "List every fault of scene files; render nothing."),
     "phase": ("skyoptics.cli.phase", "Scattering curve of one kind of particle."),
+    "study": ("skyoptics.cli.study", "Sweep drop size: bow metrics, colours, tables, plots."),
     "scenes": ("skyoptics.cli.scenes", "List the example scenes, or write a copy of one."),
 }
 

@@ -67,8 +67,8 @@ def average_bins(
     angle : ndarray, shape (nθ,)
         Scattering angles, ascending [rad].
     tolerance : float
-        Root mean square over angle of the relative change of |S1|² + |S2|² by the last doubling, in the worst bin [1]. Half
-        the drops of a doubling being new, that change is as large as the error that is left.
+        Root mean square over angles and bins of the relative change of |S1|² + |S2|² by the last doubling; in single bins
+        up to twice that is let pass [1]. Half the drops of a doubling being new, that change is as large as the error that is left.
     resolution : float
         Width in angle over which curves are averaged before they are compared [rad]: what will be seen under a disc of
         that size. 0 compares them as they are.
@@ -129,7 +129,8 @@ def average_bins(
         if level > 0:
             after = _smooth(products[:, 0] + products[:, 1], angle, resolution)
             change = np.abs(before / np.maximum(after, 1e-300) - 1.0)
-            if level >= least_level and float(np.sqrt(np.mean(change**2, axis=1)).max()) <= tolerance:
+            by_bin = np.sqrt(np.mean(change**2, axis=1))
+            if level >= least_level and np.sqrt(np.mean(by_bin**2)) <= tolerance and by_bin.max() <= 2.0 * tolerance:
                 break
     if sizes == 1:
         change = np.zeros_like(change)
@@ -201,6 +202,9 @@ def _batch(
     products = np.zeros((4, cosine.size))
     totals = np.zeros(3)
     terms = terms_needed(x)
+    if np.all(m == m[0]):
+        accumulate_sizes(complex(m[0]), x, terms, weight, cosine, first_backward, products, totals)
+        return products, totals
     for one in range(len(x)):
         part = slice(one, one + 1)
         accumulate_sizes(complex(m[one]), x[part], terms[part], weight[part], cosine, first_backward, products, totals)

@@ -80,7 +80,8 @@ def scattering_table(
         Scattering angles of a Mie table, from 0 to π, ascending [rad], default `wave_angles.nodes`; edges of the bins of
         the other two, default `angles.default_edges`.
     tolerance : float
-        Mie: root mean square relative change of P11 by the last doubling of sizes, averaged over `resolution` in angle;
+        Mie: root mean square over angles and bins of the relative change of P11, averaged over `resolution` in angle, by
+        the last doubling of sizes;
         rays and the ray parts of Airy: light-weighted relative error [1].
     resolution : float
         [rad]
@@ -285,7 +286,7 @@ def _mie(
         "relative_error": reached.tolist(),
         "tolerance": tolerance,
         "resolution_deg": resolution / DEG,
-        "target_reached": bool(reached.max() <= tolerance),
+        "target_reached": bool(np.sqrt(np.mean(reached**2)) <= tolerance and reached.max() <= 2.0 * tolerance),
         "angle_nodes": len(angle),
         "absorbed": (1.0 - mean.albedo).tolist(),
         "index": [[value.real, value.imag] for value in np.asarray(index(bins.centre), np.complex128).tolist()],

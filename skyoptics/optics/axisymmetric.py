@@ -73,10 +73,13 @@ class Axisymmetric:
     share : ndarray, shape (nλ,)
         ∫ phase dΩ of a table with ∫ P11 dΩ = 4π: scattered cross-section ÷ reference extinction cross-section. For ray
         optics ½ · albedo, the other half of the extinction being diffraction.
+    relative_extinction : ndarray, shape (nλ,), optional
+        Extinction ÷ reference; 1 where the reference is the extinction of every wavelength alike, as in ray optics.
     """
 
     table: ScatteringTable
     share: FloatArray
+    relative_extinction: FloatArray | None = None
 
     def phase(
         self, source: Source, directions: Directions, rows: slice = slice(None), stokes: bool = False
@@ -143,8 +146,9 @@ class Axisymmetric:
         return found
 
     def extinction(self, cos_zenith: FloatArray) -> FloatArray:
-        """Return extinction towards directions ÷ reference, shape (…, nλ): 1 for a scatterer without orientation."""
-        return np.ones((*np.shape(cos_zenith), len(self.share)))
+        """Return extinction towards directions ÷ reference, shape (…, nλ); the same in all directions."""
+        value = np.ones(len(self.share)) if self.relative_extinction is None else self.relative_extinction
+        return np.broadcast_to(value, (*np.shape(cos_zenith), len(self.share)))
 
 
 def _interpolate(x: FloatArray, knots: FloatArray, values: FloatArray) -> FloatArray:

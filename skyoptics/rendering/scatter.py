@@ -244,7 +244,6 @@ def axisymmetric(sheet: DropSheet | CrystalSheet, table: ScatteringTable, disc: 
     if "reference_extinction_m2" in table.report:
         from skyoptics.droplets import waves
 
-        share = waves.shares(table)[0]
-    else:
-        share = 0.5 * np.asarray(table.albedo)
-    return Axisymmetric(over_disc(shown.total(), disc), share)
+        share, extinction = waves.shares(table)
+        return Axisymmetric(over_disc(shown.total(), disc), share, extinction)
+    return Axisymmetric(over_disc(shown.total(), disc), 0.5 * np.asarray(table.albedo))

@@ -1,0 +1,1 @@
+"""The droplet-size study: sweeps over drops, metrics of the bows, colours, datasets, plots."""
