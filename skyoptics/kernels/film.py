@@ -22,8 +22,9 @@ def add_plane(total: Any, squares: Any, plane: Any, weight: float, stride: int) 
 def luminance_and_variance(sums: Any, squares: Any, factor: Any, count: float, luminance: Any, variance: Any) -> None:
     """Fill mean and variance of the mean of Σ factor · sum over bins.
 
-    sums (nλ, n, stride) float32, the first component counting, and squares (n,) float64 of `count` batches of each bin, factor (nλ,) float64; luminance and variance (n,)
-    float64. Bins are independent; fewer than two batches give an infinite variance.
+    sums (nλ, n, stride) float32, the first component counting, and squares (n,) float64 of `count` batches of each bin;
+    factor (nλ,) float64; luminance and variance (n,) float64. Bins are independent; fewer than two batches give an
+    infinite variance.
     """
     bands, n, _ = sums.shape
     for i in range(n):

@@ -98,7 +98,11 @@ VALUES = [
         "aim = { azimuth_deg = 40 }",
         "camera.aim.elevation_deg: is missing; must be a number between -90 and 90 degrees",
     ),
-    ("picture", "observer = 1931", 'picture.observer: must be "1931", "1964" or "scotopic", got 1931; put it in quotes'),
+    (
+        "picture",
+        "observer = 1931",
+        'picture.observer: must be "1931", "1964" or "scotopic", got 1931; put it in quotes',
+    ),
     ("picture", "depth_bits = 12", "picture.depth_bits: must be 8 or 16, got 12"),
     ("picture", "wavelengths_nm = [500, 200]", "picture.wavelengths_nm.2: must lie between 300 and 1100 nm, got 200"),
     (
