@@ -26,6 +26,18 @@ def _beside_scene(path: str | None, info: ValidationInfo) -> str | None:
     return path if path is None or folder is None else str(Path(folder, path))
 
 
+IndexTable = Annotated[
+    str | None,
+    text(1000, "CSV file of refractive index by wavelength, its path counted from the scene file; excludes index"),
+    AfterValidator(_beside_scene),
+]
+Place = Annotated[
+    Literal["curtain", "layer"],
+    note("A curtain has the same optical depth in every direction of view, a layer is a level sheet overhead"),
+]
+BelowHorizon = Annotated[bool, note("Whether a curtain goes on below the horizon")]
+
+
 class Particles(Table):
     """What every kind of particle has; a new kind is a subclass, named in `AnyParticles`."""
 
@@ -52,11 +64,7 @@ class Drops(Particles):
     index: Annotated[
         float | None, number(1.0001, 3, "", "Refractive index, one for all wavelengths, instead of that of water")
     ] = None
-    index_table: Annotated[
-        str | None,
-        text(1000, "CSV file of refractive index by wavelength, its path counted from the scene file; excludes index"),
-        AfterValidator(_beside_scene),
-    ] = None
+    index_table: IndexTable = None
     orders: Annotated[
         tuple[Annotated[int, Field(ge=0, le=10)], ...],
         Strict(False),
@@ -114,11 +122,8 @@ class Drops(Particles):
     path_m: Annotated[
         float | None, number(0.01, 1e6, "m", "Depth of the curtain along the line of sight, or thickness of the layer")
     ] = None
-    place: Annotated[
-        Literal["curtain", "layer"],
-        note("A curtain has the same optical depth in every direction of view, a layer is a level sheet overhead"),
-    ] = "curtain"
-    below_horizon: Annotated[bool, note("Whether a curtain goes on below the horizon")] = False
+    place: Place = "curtain"
+    below_horizon: BelowHorizon = False
 
     @property
     def radius(self) -> float:
@@ -185,16 +190,9 @@ class Crystals(Particles):
     index: Annotated[
         float | None, number(1.0001, 2, "", "Refractive index, one for all wavelengths, instead of that of ice")
     ] = None
-    index_table: Annotated[
-        str | None,
-        text(1000, "CSV file of refractive index by wavelength, its path counted from the scene file; excludes index"),
-        AfterValidator(_beside_scene),
-    ] = None
-    place: Annotated[
-        Literal["curtain", "layer"],
-        note("A curtain has the same optical depth in every direction of view, a layer is a level sheet overhead"),
-    ] = "layer"
-    below_horizon: Annotated[bool, note("Whether a curtain goes on below the horizon")] = False
+    index_table: IndexTable = None
+    place: Place = "layer"
+    below_horizon: BelowHorizon = False
 
     @property
     def diameter(self) -> float:
