@@ -75,7 +75,9 @@ def run(arguments: list[str]) -> int:
     try:
         result = cli.main(arguments, prog_name="skyoptics", standalone_mode=False)
     except click.Abort:
-        click.echo("interrupted: nothing was left half-written", err=True)
+        click.echo(
+            "interrupted: nothing was left half-written, finished batches are kept; the same command goes on", err=True
+        )
         return 130
     except click.ClickException as error:
         error.show()
