@@ -73,6 +73,11 @@ def command(
     if changed := output.traced_otherwise(wanted, result.report):
         click.echo(f"note: {changed}", err=True)
     files = output.write(result, described, wanted, words)
+    for sheet in result.report["sheets"]:
+        if sheet.get("reason", "asked for") != "asked for":
+            click.echo(f"{sheet['name']}: method {sheet['method']}, {sheet['reason']}", err=True)
+        for warning in sheet.get("warnings", ()):
+            click.echo(f"note: {sheet['name']}: {warning}", err=True)
     for caution in result.report["cautions"]:
         click.echo(f"caution: {caution}", err=True)
     last = f"{files[0]}: {result.report['look_for']}"

@@ -234,7 +234,7 @@ def _curve(
 def lines(curve: Curve) -> Iterator[str]:
     """Yield the curve as CSV lines, the header first."""
     yield ",".join(COLUMNS)
-    angle = [f"{value / DEG:.6g}" for value in curve.table.angle]
+    angle = [f"{value / DEG:.9g}" for value in curve.table.angle]
     elements = curve.table.elements[0]
     for column, wavelength in enumerate(curve.table.wavelength):
         intensity = elements[:, column, 0]

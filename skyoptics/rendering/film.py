@@ -27,6 +27,7 @@ from skyoptics.geometry.directions import Directions
 from skyoptics.kernels.film import add_plane, luminance_and_variance
 from skyoptics.optics.source import Source
 from skyoptics.rendering.store import folder as store_folder
+from skyoptics.rendering.store import make_room
 from skyoptics.units import Float32Array, FloatArray
 
 FORMAT = 2
@@ -208,7 +209,7 @@ def keep(film: Film) -> bool:
         with aside.open("wb") as file:
             np.savez(file, about=np.array(json.dumps(about)), sums=film.sums, squares=film.squares, counts=film.counts)
         aside.replace(path)
-        _make_room(path)
+        make_room(path, MOST_STORED)
     except OSError:
         return False
     finally:
@@ -224,13 +225,3 @@ def _stored_batches(path: Path, key: str) -> int:
         return int(about["batches"]) if about["key"] == key else 0
     except Exception:
         return 0
-
-
-def _make_room(newest: Path) -> None:
-    """Remove films not used for longest while all together are too large."""
-    files = sorted(newest.parent.glob("*.npz"), key=lambda path: path.stat().st_mtime, reverse=True)
-    total = 0
-    for path in files:
-        total += path.stat().st_size
-        if total > MOST_STORED and path != newest:
-            path.unlink(missing_ok=True)

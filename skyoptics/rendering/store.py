@@ -21,6 +21,8 @@ import numpy as np
 from skyoptics.optics.table import ScatteringTable
 
 FORMAT = 1
+MOST_STORED = 2e9
+"""Tables are kept up to this size together [byte]; the ones not used for longest go first."""
 _ARRAYS = ("angle", "wavelength", "elements", "error", "albedo", "asymmetry")
 
 
@@ -72,6 +74,8 @@ def find_arrays(key: str) -> tuple[dict[str, Any], dict[str, Any]] | None:
             about = json.loads(str(stored["about"]))
             if about["key"] != key or about["format"] != FORMAT:
                 raise ValueError("it belongs to another job")
+            with suppress(OSError):
+                path.touch()  # used just now
             return {name: stored[name] for name in stored.files if name != "about"}, about
     except Exception as error:  # whatever is in the file: it is only a copy
         aside = path.with_suffix(".broken")
@@ -89,9 +93,20 @@ def keep_arrays(key: str, arrays: dict[str, Any], about: dict[str, Any]) -> bool
         with aside.open("wb") as file:
             np.savez(file, about=np.array(json.dumps({"key": key, "format": FORMAT, **about})), **arrays)
         aside.replace(path)
+        make_room(path, MOST_STORED)
     except OSError:
         return False
     finally:
         with suppress(OSError):
             aside.unlink()
     return True
+
+
+def make_room(newest: Path, limit: float) -> None:
+    """Remove the files beside `newest` that were not used for longest while all together exceed `limit` bytes."""
+    files = sorted(newest.parent.glob("*.npz"), key=lambda path: path.stat().st_mtime, reverse=True)
+    total = 0
+    for path in files:
+        total += path.stat().st_size
+        if total > limit and path != newest:
+            path.unlink(missing_ok=True)

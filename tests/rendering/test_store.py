@@ -1,5 +1,7 @@
 """Stored tables: found again, set aside in words when they cannot be used."""
 
+import os
+
 import numpy as np
 
 from skyoptics.optics.table import ScatteringTable
@@ -61,3 +63,18 @@ def test_a_folder_that_cannot_be_written_is_no_reason_to_fail(monkeypatch, tmp_p
     monkeypatch.setenv("SKYOPTICS_CACHE", str(tmp_path / "file"))
     assert not tables.keep("0" * 32, table())
     assert tables.find("0" * 32) is None
+
+
+def test_the_store_stays_small(tmp_path, monkeypatch):
+    monkeypatch.setenv("SKYOPTICS_CACHE", str(tmp_path))
+    monkeypatch.setattr(tables, "MOST_STORED", 20e3)
+    keys = [tables.trace_key(number=number) for number in range(6)]
+    for age, key in enumerate(keys):
+        assert tables.keep(key, table())
+        path = tmp_path / "tables" / f"{key}.npz"
+        os.utime(path, (1e9 + age, 1e9 + age))
+    assert tables.keep(tables.trace_key(number=6), table())
+    kept = list((tmp_path / "tables").glob("*.npz"))
+    assert sum(path.stat().st_size for path in kept) <= 20e3
+    assert tables.find(tables.trace_key(number=6)) is not None
+    assert tables.find(keys[0]) is None
