@@ -88,8 +88,7 @@ def run(arguments: list[str]) -> int:
     except MemoryError:
         click.echo("out of memory: make the picture smaller or take fewer wavelengths", err=True)
         return 1
-    except BrokenPipeError:
-        sys.stderr.close()
+    except SystemExit:  # outside its standalone mode, click leaves so for a closed pipe alone
         return 0
     return result if isinstance(result, int) else 0
 

@@ -12,6 +12,7 @@ option                used by
 from __future__ import annotations
 
 from collections.abc import Callable
+from math import isfinite
 from pathlib import Path
 from typing import Any, TypeVar
 
@@ -71,6 +72,17 @@ class NumberList(click.ParamType[tuple[Any, ...]]):
         if len(set(numbers)) < len(numbers):
             self.fail("a number stands in the list twice", param, ctx)
         return tuple(numbers)
+
+
+class Between(click.FloatRange):
+    """A number inside a range; nan is outside every range."""
+
+    def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> float:
+        """Return the number."""
+        number = float(super().convert(value, param, ctx))
+        if not isfinite(number):
+            self.fail(f"{value} is not a number", param, ctx)
+        return number
 
 
 class Word(click.Choice[str]):

@@ -7,7 +7,7 @@ from typing import Any
 
 import click
 
-from skyoptics.cli.options import NumberList, Word, json_option, sampling_options
+from skyoptics.cli.options import Between, NumberList, Word, json_option, sampling_options
 from skyoptics.errors import nearest
 
 KINDS = ("drop", "crystal")
@@ -38,7 +38,7 @@ WAVELENGTHS = click.option(
     help="Wavelengths in vacuum [nm].",
 )
 STEP = click.option(
-    "--step-deg", type=click.FloatRange(0.001, 10), default=0.1, show_default=True, help="Width of angle bins [°]."
+    "--step-deg", type=Between(0.001, 10), default=0.1, show_default=True, help="Width of angle bins [°]."
 )
 MEDIUM = click.option(
     "--medium",
@@ -52,7 +52,7 @@ CSV = click.option("--csv", type=click.Path(path_type=Path, allow_dash=True), he
 
 
 @command.command("drop")
-@click.option("--radius-um", type=click.FloatRange(1, 10000), default=500.0, show_default=True, help="Radius [µm].")
+@click.option("--radius-um", type=Between(1, 10000), default=500.0, show_default=True, help="Radius [µm].")
 @click.option(
     "--method",
     type=Word(["rays", "mie", "airy", "auto"]),
@@ -61,13 +61,11 @@ CSV = click.option("--csv", type=click.Path(path_type=Path, allow_dash=True), he
     help="Ray optics, Lorenz-Mie, Airy's theory, or whichever fits.",
 )
 @click.option(
-    "--spread", type=click.FloatRange(0, 0.5), default=0.0, show_default=True, help="Gaussian, relative to the radius."
+    "--spread", type=Between(0, 0.5), default=0.0, show_default=True, help="Gaussian, relative to the radius."
 )
 @WAVELENGTHS
-@click.option(
-    "--temperature-c", type=click.FloatRange(-12, 99), default=20.0, show_default=True, help="Of the water [°C]."
-)
-@click.option("--index", type=click.FloatRange(1.0001, 3), help="Constant refractive index instead of that of water.")
+@click.option("--temperature-c", type=Between(-12, 99), default=20.0, show_default=True, help="Of the water [°C].")
+@click.option("--index", type=Between(1.0001, 3), help="Constant refractive index instead of that of water.")
 @MEDIUM
 @click.option(
     "--orders",
@@ -92,13 +90,13 @@ def drop(csv: Path | None, as_json: bool, **options: Any) -> None:
 @command.command("crystal")
 @click.option(
     "--aspect",
-    type=click.FloatRange(0.01, 100),
+    type=Between(0.01, 100),
     default=1.0,
     show_default=True,
     help="Length along the c-axis ÷ diameter across corners.",
 )
 @WAVELENGTHS
-@click.option("--index", type=click.FloatRange(1.0001, 2), help="Constant refractive index instead of that of ice.")
+@click.option("--index", type=Between(1.0001, 2), help="Constant refractive index instead of that of ice.")
 @MEDIUM
 @STEP
 @DISC

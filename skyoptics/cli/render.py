@@ -53,6 +53,8 @@ def command(
     from skyoptics.scene.files import safe_name
     from skyoptics.scene.load import load
 
+    if stokes and not data:
+        raise click.UsageError("--stokes puts polarisation into the data; give --data too")
     described = load(scene, overrides)
     name = safe_name(scene)
     folder = out or Path("outputs", name)
@@ -63,11 +65,11 @@ def command(
     settings = Settings(quality, seed, threads or usable_cores(), processes, rays)
     wanted = output.Wanted(folder, name, data, extra, noise_map)
     if dry_run:
-        _estimate(described, scene, settings, wanted, as_json)
+        _estimate(described, scene, settings, wanted, stokes, as_json)
         return
     output.prepare(folder)
     progress.note_first_compilation()
-    words = _command(scene, overrides, wanted, settings)
+    words = _command(scene, overrides, wanted, settings, stokes)
     with progress.shown() as tell:
         result = render(described, str(scene), settings, tell, data, wanted.preview, stokes)
     if changed := output.traced_otherwise(wanted, result.report):
@@ -88,22 +90,23 @@ def command(
         click.echo(last)
 
 
-def _command(scene: Path, overrides: tuple[str, ...], wanted: Any, settings: Any) -> list[str]:
+def _command(scene: Path, overrides: tuple[str, ...], wanted: Any, settings: Any, stokes: bool) -> list[str]:
     """Return the words that make the picture again, run beside the scene file."""
     words = ["skyoptics", "render", scene.name, "--seed", str(settings.seed), "--quality", settings.quality]
     if settings.rays is not None:
         words += ["--rays", str(settings.rays)]
     for override in overrides:
         words += ["--set", override]
-    words += ["--data"] if wanted.data else []
+    flags = {"--data": wanted.data, "--stokes": stokes, "--noise-map": wanted.noise_map}
+    words += [flag for flag, given in flags.items() if given]
     return words + [word for name in wanted.extra for word in ("--image", name)]
 
 
-def _estimate(scene: Any, path: Path, settings: Any, files: Any, as_json: bool) -> None:
+def _estimate(scene: Any, path: Path, settings: Any, files: Any, stokes: bool, as_json: bool) -> None:
     """Print what a render would take."""
     from skyoptics.rendering.estimate import estimate
 
-    wanted = estimate(scene, str(path), settings, files.data) | {"files": [str(file) for file in files.paths()]}
+    wanted = estimate(scene, str(path), settings, files.data, stokes) | {"files": [str(file) for file in files.paths()]}
     if as_json:
         click.echo(json.dumps(wanted))
         return

@@ -126,6 +126,8 @@ class Job:
         Axis of a polariser on the lens, from the top of the picture, clockwise from behind the camera [rad].
     stokes : bool
         Whether all four Stokes components are wanted.
+    by_moon : bool
+        Whether the moon shines, at which one may look.
     """
 
     bins: Bins
@@ -135,6 +137,7 @@ class Job:
     background: Background
     polariser: float | None = None
     stokes: bool = False
+    by_moon: bool = False
 
 
 def build(scene: Scene, where: str, stokes: bool = False) -> Job:
@@ -188,6 +191,7 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
         Background(scene.picture.background, scene.picture.ground),
         scene.camera.polariser,
         stokes or scene.camera.polariser is not None,
+        scene.light.body == "moon",
     )
 
 

@@ -35,6 +35,8 @@ def what_to_look_for(job: Job) -> str:
     for sheet in (sheet for sheet in job.sheets if isinstance(sheet, DropSheet)):
         for order in (p for p in sheet.orders if p in _NAMES):
             angle = np.pi - float(bows.scattering_angle(sheet.index(middle).real, order))
+            if not np.isfinite(angle):  # no bow of this order at this index
+                continue
             top = float(elevation) + angle
             if top > 0.0 or job.directions.project(-job.sources[0].direction)[0] > 0.0:
                 found.append(f"{_NAMES[order]} bow {angle / DEG:.1f}° from the antisolar point, its top {_height(top)}")
@@ -46,7 +48,7 @@ def what_to_look_for(job: Job) -> str:
 def cautions(job: Job) -> list[str]:
     """Return the cautions for whoever goes out to see this."""
     result = []
-    if _sun_near_frame(job):
+    if not job.by_moon and _sun_near_frame(job):
         result.append(SUN_CAUTION)
     if any(isinstance(sheet, DropSheet) for sheet in job.sheets):
         result.append(SHOWER_CAUTION)

@@ -22,7 +22,7 @@ PIXELS_PER_SECOND = 1.0e6
 """Pixels developed and written (same machine)."""
 
 
-def estimate(scene: Scene, where: str, settings: Settings, data: bool) -> dict[str, Any]:
+def estimate(scene: Scene, where: str, settings: Settings, data: bool, stokes: bool = False) -> dict[str, Any]:
     """Return rays, memory and time of a render, JSON types.
 
     Parameters
@@ -35,14 +35,17 @@ def estimate(scene: Scene, where: str, settings: Settings, data: bool) -> dict[s
         Quality, seed, threads.
     data : bool
         Whether the radiance will be kept.
+    stokes : bool
+        Whether polarisation will be asked for.
 
     Returns
     -------
     dict
-        `rays` still to trace at least (the noise target may ask for more), `tables`, `stored_tables`, `memory_bytes`,
+        `rays` still to trace at least (the noise target may ask for more; flattened drops are not counted), `tables`,
+        `stored_tables`, `memory_bytes`,
         `seconds`.
     """
-    job = build(scene, where)
+    job = build(scene, where, stokes)
     tables = [sheet for sheet in job.sheets if is_table(sheet)]
     stored = [find(table_key(sheet, job, settings.sampling)) is not None for sheet in tables]
     rays = sum(least_rays(sheet, job.bins) for sheet, found in zip(tables, stored, strict=True) if not found)
@@ -50,9 +53,10 @@ def estimate(scene: Scene, where: str, settings: Settings, data: bool) -> dict[s
     films = 0
     for sheet in job.sheets:
         if isinstance(sheet, CrystalSheet) and not is_table(sheet):
-            film = begin(sheet, job, settings.seed).film
-            wanted = settings.rays or LEAST_ROUNDS * int(film.rays.sum())
-            films += max(0, wanted - film.traced_rays)
+            for source in job.sources:
+                film = begin(sheet, job, settings.seed, source).film
+                wanted = settings.rays or LEAST_ROUNDS * int(film.rays.sum())
+                films += max(0, wanted - film.traced_rays)
     values = pixels * len(job.bins) * max(len(job.sheets), 1) * (2 if data else 1)
     seconds = rays / TABLE_RAYS_PER_SECOND + films / FILM_RAYS_PER_SECOND + values / VALUES_PER_SECOND
     return {

@@ -107,12 +107,12 @@ def rays_by_bin(bins: Bins, pixels: int) -> Any:
     the eye hardly sees under the sun get fewer, down to an eighth.
     """
     seen = weights(bins).sum(axis=1) * spectrum.irradiance(bins)
-    share = np.clip(seen / seen.max(), 0.125, 1.0)
+    share = np.clip(seen / seen.max(), 0.125, 1.0) if seen.max() > 0.0 else np.ones(len(bins))
     batch = 1 << int(np.clip(ceil(np.log2(max(pixels, 1) / 6.0)), 14, 20))
     return (np.maximum(np.round(batch * share / 256.0), 1) * 256).astype(np.int64)
 
 
-def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None) -> Work:
+def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None, copy: int = 0) -> Work:
     """Return the film of a sheet of crystals, from the store where it is there, and what its batches need.
 
     Parameters
@@ -125,27 +125,37 @@ def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None
         Of the random numbers.
     source : Source, optional
         What lights them; default the first of the job.
+    copy : int, optional
+        Number of the sheet among sheets of the same crystals, which need rays of their own.
     """
     source, bins, grid = source or job.sources[0], job.bins, job.directions
     packed = grid.packed()
     rays = rays_by_bin(bins, grid.shape[0] * grid.shape[1])
+    particles: dict[str, Any] = {
+        "shape": sheet.shape.packed_slabs(),
+        "orientation": [sheet.orientation.name, 0.0 if sheet.orientation.name == "random" else sheet.orientation.tilt],
+        "index": sheet.index.key,
+        "diameter": sheet.diameter,
+        "source": source.direction,
+        "seed": seed,
+        "copy": copy,
+    }
     key = trace_key(
         kind="crystals onto a picture",
-        shape=sheet.shape.packed_slabs(),
-        orientation=[sheet.orientation.name, 0.0 if sheet.orientation.name == "random" else sheet.orientation.tilt],
-        index=sheet.index.key,
-        diameter=sheet.diameter,
-        source=source.direction,
         disc=np.append(source.disc.darkening.ravel(), source.disc.radius),
         directions=packed,
         stokes=np.append(source.stokes.ravel(), float(job.stokes)),
         guide=guide.parameters(),
         bins=bins.edges,
         rays=rays,
-        seed=seed,
         kernels=KERNEL_HASH,
+        **particles,
     )
+    # films of different crystals draw different random numbers; a polariser or another frame does not change them
+    stream = int(trace_key(kind="random numbers", **particles)[:15], 16)
     reference = weights(bins)[:, 1] * spectrum.irradiance(bins)
+    if not reference.any():  # nothing that the eye sees: keep the error of all bins alike
+        reference = np.ones(len(bins))
 
     def ready(row: int, edges: FloatArray, found: Guide | None = None) -> Prepared:
         return prepare(
@@ -164,11 +174,11 @@ def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None
 
     def all_bins() -> tuple[Prepared, ...]:
         span = np.array([bins.edges.min(), bins.edges.max()])
-        found = guide.learn(ready(len(bins) // 2, span), packed, seed)
+        found = guide.learn(ready(len(bins) // 2, span), packed, stream)
         return tuple(ready(row, edges, found) for row, edges in enumerate(bins.edges))
 
     blank = Film.blank(key, rays, reference, (*grid.shape, 4) if job.stokes else grid.shape)
-    return Work(sheet, source, films.find(blank), all_bins, packed, seed)
+    return Work(sheet, source, films.find(blank), all_bins, packed, stream)
 
 
 def trace(

@@ -184,9 +184,14 @@ def find(blank: Film) -> Film:
             sums, squares, counts = stored["sums"], stored["squares"], stored["counts"]
         if sums.shape != blank.sums.shape or counts.shape != blank.counts.shape:
             raise ValueError("it has another size")
+    except FileNotFoundError:
+        return blank  # gone since it was looked for
+    except MemoryError:
+        raise
     except Exception as error:  # whatever is in the file: it is only a copy
         sys.stderr.write(f"set aside stored batches that cannot be used ({error}); tracing starts anew\n")
-        path.replace(path.with_suffix(".broken"))
+        with suppress(OSError):
+            path.replace(path.with_suffix(".broken"))
         return blank
     with suppress(OSError):
         path.touch()

@@ -7,6 +7,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
+from uuid import uuid4
 
 import numpy as np
 
@@ -92,11 +93,11 @@ def prepare(folder: Path) -> None:
     ResourceError
         In words.
     """
-    probe = folder / ".skyoptics-probe"
+    probe = folder / f".skyoptics-{uuid4().hex}"
     try:
         folder.mkdir(parents=True, exist_ok=True)
         probe.touch()
-        probe.unlink()
+        probe.unlink(missing_ok=True)
     except OSError as error:
         reason = error.strerror or str(error)
         raise ResourceError(
@@ -158,7 +159,8 @@ def traced_otherwise(wanted: Wanted, report: Mapping[str, Any]) -> str | None:
     except (OSError, ValueError, KeyError, TypeError):
         return None
     now = {sheet["trace_key"] for sheet in report["sheets"]}
-    if now <= before or not before:
+    same_effort = all(earlier.get(name) == report[name] for name in ("quality", "skyoptics"))
+    if now <= before or not before or not same_effort:
         return None
     return (
         f"particles, light, camera or seed have changed since {wanted.name}.json was written: what was traced then is not "

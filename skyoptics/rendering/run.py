@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import multiprocessing
 import os
+import signal
 import time
 from collections.abc import Callable, Iterator
 from concurrent.futures import Executor, ProcessPoolExecutor, ThreadPoolExecutor
@@ -234,7 +235,9 @@ def _tracers(settings: Settings, threads: Executor) -> Iterator[Executor]:
         yield threads
         return
     context = multiprocessing.get_context("spawn")
-    with ProcessPoolExecutor(settings.processes, mp_context=context) as processes:
+    # Ctrl-C goes to the whole group: the parent alone answers it, workers end when it shuts them down
+    ignore = (signal.SIGINT, signal.SIG_IGN)
+    with ProcessPoolExecutor(settings.processes, context, signal.signal, ignore) as processes:
         try:
             yield processes
         except BaseException:
@@ -247,6 +250,7 @@ def _scatter(
 ) -> tuple[list[Sheet], list[Traced], list[expose.Work]]:
     """Return the sheets, how their tables were come by, and the films that are still to be traced."""
     sheets, traced, works = [], [], []
+    seen: list[tuple[Any, ...]] = []
     scatterers: tuple[Scatterer, ...]
     for sheet in job.sheets:
         if is_table(sheet):
@@ -259,7 +263,10 @@ def _scatter(
             scatterers = tuple(scatterer for scatterer, _ in found)
             traced += [how for _, how in found]
         else:
-            films = [expose.begin(sheet, job, sampling.seed, source) for source in job.sources]
+            alike = (sheet.shape.packed_slabs().tobytes(), sheet.orientation, sheet.index.key, sheet.diameter)
+            copy = seen.count(alike)
+            seen.append(alike)
+            films = [expose.begin(sheet, job, sampling.seed, source, copy) for source in job.sources]
             scatterers = tuple(work.scatterer() for work in films)
             works += films
         sheets.append(Sheet(sheet.name, scatterers, sheet.amount))

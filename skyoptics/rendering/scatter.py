@@ -110,9 +110,9 @@ def table_key(sheet: DropSheet | CrystalSheet, job: Job, sampling: Sampling) -> 
         if plain_rays(sheet):
             edges = angles.default_edges(sheet.index, job.bins)
             return store.trace_key(kind="drops by rays", radius=sheet.radius, edges=edges, **shared)
-        return store.trace_key(
-            kind="drops by waves", method=_choice(sheet, job)[0], sizes=identity(sheet.sizes), **shared
-        )
+        method = _choice(sheet, job)[0]
+        shared["target"] = sampling.target
+        return store.trace_key(kind="drops by waves", method=method, sizes=identity(sheet.sizes), **shared)
     return store.trace_key(
         kind="random crystals",
         count=CRYSTAL_ANGLES,
@@ -192,7 +192,9 @@ def find_table(
     names = ("relative_error", "absorbed", "cut_off")
     about: dict[str, Any] = {f"{name}_at_most": max(report[name]) for name in names if name in report}
     about["target_reached"] = sampling.rays is not None or report.get("target_reached", True)
-    about |= {name: report[name] for name in ("method", "reason", "warnings", "error") if name in report}
+    about |= {name: report[name] for name in ("method", "warnings", "error") if name in report}
+    if isinstance(sheet, DropSheet) and not plain_rays(sheet):
+        about["reason"] = _choice(sheet, job)[1]
     rays = int(report.get("rays", 0))
     return table, Traced(sheet.name, key, reused, 0 if reused else rays, rays, about)
 
@@ -216,12 +218,10 @@ def _trace_table(
     if isinstance(sheet, DropSheet) and not plain_rays(sheet):
         from skyoptics.droplets import waves
 
-        method, reason = _choice(sheet, job)
-        found = waves.scattering_table(
+        method, _ = _choice(sheet, job)
+        return waves.scattering_table(
             sheet.sizes, sheet.index, job.bins, method=method, tolerance=2.0 * sampling.target, **shared
         )
-        found.report["reason"] = reason
-        return found
     if sampling.rays is None:
         shared["relative_error"] = sampling.target * (1.0 if isinstance(sheet, DropSheet) else CRYSTAL_TABLE_ERROR)
     else:  # a target that no number of batches reaches, so that the number given rules

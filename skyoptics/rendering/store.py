@@ -77,10 +77,15 @@ def find_arrays(key: str) -> tuple[dict[str, Any], dict[str, Any]] | None:
             with suppress(OSError):
                 path.touch()  # used just now
             return {name: stored[name] for name in stored.files if name != "about"}, about
+    except FileNotFoundError:
+        return None  # gone since it was looked for
+    except MemoryError:
+        raise
     except Exception as error:  # whatever is in the file: it is only a copy
         aside = path.with_suffix(".broken")
         sys.stderr.write(f"set aside a stored table that cannot be used ({error}); it is traced anew\n")
-        path.replace(aside)
+        with suppress(OSError):
+            path.replace(aside)
         return None
 
 

@@ -155,6 +155,10 @@ class Drops(Particles):
             yield "path_m", f"is missing; {given[0]} needs it for an optical depth"
         if not given and values.get("path_m") is not None:
             yield "path_m", "needs liquid_water_g_m3 or concentration_per_m3 beside it"
+        if values.get("axis_ratios", "round") != "round" and "orders" in values and values["orders"] != ORDERS:
+            beyond = [order for order in values["orders"] if order > 7]
+            if beyond:
+                yield "orders", f"flattened drops are traced up to order 7, got {beyond[0]}; leave it out"
         if values.get("method") == "mie" and "orders" in values and values["orders"] != ORDERS:
             yield (
                 "orders",

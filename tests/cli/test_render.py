@@ -134,3 +134,22 @@ def test_interruption_leaves_nothing_half_written(tiny, tmp_path):
     assert "Traceback" not in err
     assert out == ""
     assert list((tmp_path / "o").iterdir()) == []
+
+
+def test_an_index_without_a_bow_has_no_sentence_about_one(command, tiny):
+    done = command("render", tiny, "--quality", "draft", "--set", "air.1.index=2.5")
+    assert done.code == 0
+    assert "nan" not in done.out
+
+
+def test_polarisation_needs_data(command, tiny):
+    done = command("render", tiny, "--stokes")
+    assert done.code == 2
+    assert "--data" in done.err
+
+
+def test_a_change_of_quality_is_no_change_of_scene(command, tiny):
+    command("render", tiny, "--quality", "draft", "--seed", 21)
+    assert "have changed" not in command("render", tiny, "--quality", "normal", "--seed", 21).err
+    moved = command("render", tiny, "--quality", "normal", "--seed", 21, "--set", "air.1.temperature_c=20")
+    assert "have changed" in moved.err

@@ -301,3 +301,24 @@ def test_preview_and_noise_map(command, tiny, tmp_path, monkeypatch, store):
     assert seen == [True]
     assert sorted(p.name for p in (tmp_path / "outputs/tiny").iterdir()) == ["tiny.json", "tiny.noise.png", "tiny.png"]
     assert json.loads(done.out)["lightness_error"] > 0
+
+
+def test_two_sheets_of_the_same_crystals_are_one_twice_as_thick():
+    """Each sheet has rays of its own: the light adds up, and the noise is that of twice the rays."""
+    sheet = "[[air]]\nkind = 'crystals'\norientation = 'plate'\naspect = 0.4\ntilt_deg = 2\noptical_depth = {}\n"
+    rest = f"[camera]\n{SMALL}\n[picture]\n{THREE.replace('0.02', '0.0')}\n"
+    light = "[light]\nelevation_deg = 20\n"
+    settings = Settings("draft", 5, 2, rays=400_000)
+    two = render(from_text(light + 2 * sheet.format(0.1) + rest), "test", settings)
+    one = render(from_text(light + sheet.format(0.2) + rest), "test", settings)
+    assert not np.array_equal(two.xyz, one.xyz)
+    assert np.nansum(two.xyz) == pytest.approx(np.nansum(one.xyz), rel=0.02)
+    assert two.report["lightness_error"] == pytest.approx(one.report["lightness_error"] / np.sqrt(2), rel=0.2)
+
+
+@pytest.mark.parametrize("wavelengths", ["[1000]", "[350, 850]"])
+def test_wavelengths_that_no_eye_sees(wavelengths):
+    described = scene(20, PLATES, SMALL, picture=f"wavelengths_nm = {wavelengths}\nbackground = 0.0")
+    result = render(described, "test", Settings("draft", 5, 2, rays=50_000))
+    assert result.report["traced_rays"] >= 50_000
+    assert np.isfinite(result.xyz).all()
