@@ -244,7 +244,7 @@ def _run(works: Sequence[Work], wanted: Sequence[int], executor: Executor | None
 
 
 def _share_out(parts: list[float], rounds: list[int], costs: list[float], target: float, most: float) -> list[int]:
-    """Return rounds for each film that reach a target at the least cost, at most doubled at once and capped.
+    """Return rounds for each film that reach a target at the least cost, at most fourfold at once and capped.
 
     Film i contributes variance v_i / K_i, v_i = part² · rounds, at cost c_i K_i: the best K_i ∝ √(v_i / c_i).
     """

@@ -12,7 +12,6 @@ do not change with what changes a picture without tracing again; relative errors
 from __future__ import annotations
 
 import json
-import sys
 from collections.abc import Callable, Iterator
 from contextlib import suppress
 from dataclasses import dataclass, field
@@ -26,8 +25,8 @@ from skyoptics.errors import DomainError
 from skyoptics.geometry.directions import Directions
 from skyoptics.kernels.film import add_plane, luminance_and_variance
 from skyoptics.optics.source import Source
+from skyoptics.rendering.store import find_arrays, make_room
 from skyoptics.rendering.store import folder as store_folder
-from skyoptics.rendering.store import make_room
 from skyoptics.units import Float32Array, FloatArray
 
 FORMAT = 2
@@ -173,30 +172,20 @@ def find(blank: Film) -> Film:
 
     A file that is broken or belongs to another job is set aside, in words.
     """
-    path = films_folder() / f"{blank.key}.npz"
-    if not path.exists():
+    found = find_arrays(blank.key, films_folder(), FORMAT, "stored batches")
+    if found is None:
         return blank
-    try:
-        with path.open("rb") as file, np.load(file, allow_pickle=False) as stored:
-            about = json.loads(str(stored["about"]))
-            if about["key"] != blank.key or about["format"] != FORMAT:
-                raise ValueError("it belongs to another job")
-            sums, squares, counts = stored["sums"], stored["squares"], stored["counts"]
-        if sums.shape != blank.sums.shape or counts.shape != blank.counts.shape:
-            raise ValueError("it has another size")
-    except FileNotFoundError:
-        return blank  # gone since it was looked for
-    except MemoryError:
-        raise
-    except Exception as error:  # whatever is in the file: it is only a copy
-        sys.stderr.write(f"set aside stored batches that cannot be used ({error}); tracing starts anew\n")
-        with suppress(OSError):
-            path.replace(path.with_suffix(".broken"))
-        return blank
-    with suppress(OSError):
-        path.touch()
+    arrays, about = found
+    counts = arrays["counts"]
     return Film(
-        blank.key, blank.rays, blank.reference, sums, squares, counts, dict(about["tally"]), reused=int(counts.sum())
+        blank.key,
+        blank.rays,
+        blank.reference,
+        arrays["sums"],
+        arrays["squares"],
+        counts,
+        dict(about["tally"]),
+        reused=int(counts.sum()),
     )
 
 

@@ -64,29 +64,41 @@ def keep(key: str, table: ScatteringTable) -> bool:
     return keep_arrays(key, arrays, {"parts": table.parts, "report": table.report})
 
 
-def find_arrays(key: str) -> tuple[dict[str, Any], dict[str, Any]] | None:
-    """Return stored arrays and what is said about them, or None where there is nothing that can be used."""
-    path = folder() / f"{key}.npz"
-    if not path.exists():
-        return None
+def find_arrays(
+    key: str, place: Path | None = None, form: int = FORMAT, what: str = "a stored table"
+) -> tuple[dict[str, Any], dict[str, Any]] | None:
+    """Return stored arrays and what is said about them, or None where there is nothing that can be used.
+
+    Parameters
+    ----------
+    key : str
+        Trace key.
+    place : Path, optional
+        Folder; default that of tables.
+    form : int, optional
+        Number of the layout that is understood.
+    what : str, optional
+        What a broken file is called.
+    """
+    path = (place or folder()) / f"{key}.npz"
     try:
         with path.open("rb") as file, np.load(file, allow_pickle=False) as stored:
             about = json.loads(str(stored["about"]))
-            if about["key"] != key or about["format"] != FORMAT:
+            if about["key"] != key or about["format"] != form:
                 raise ValueError("it belongs to another job")
-            with suppress(OSError):
-                path.touch()  # used just now
-            return {name: stored[name] for name in stored.files if name != "about"}, about
-    except FileNotFoundError:
-        return None  # gone since it was looked for
+            arrays = {name: stored[name] for name in stored.files if name != "about"}
+    except (FileNotFoundError, NotADirectoryError):
+        return None
     except MemoryError:
         raise
     except Exception as error:  # whatever is in the file: it is only a copy
-        aside = path.with_suffix(".broken")
-        sys.stderr.write(f"set aside a stored table that cannot be used ({error}); it is traced anew\n")
+        sys.stderr.write(f"set aside {what} that cannot be used ({error}); tracing starts anew\n")
         with suppress(OSError):
-            path.replace(aside)
+            path.replace(path.with_suffix(".broken"))
         return None
+    with suppress(OSError):
+        path.touch()  # used just now
+    return arrays, about
 
 
 def keep_arrays(key: str, arrays: dict[str, Any], about: dict[str, Any]) -> bool:
