@@ -19,8 +19,9 @@ from skyoptics.crystals.tracing import Prepared, Tally, plain_plane, prepare, tr
 from skyoptics.geometry.axes import direction
 from skyoptics.geometry.directions import Directions
 from skyoptics.kernels import lanes
+from skyoptics.kernels.crystal import INVERSE_KAPPA, RADIUS, SCALE, SPAN
 from skyoptics.kernels.entry import PATCH, enter_chunk
-from skyoptics.kernels.orient import orient_chunk, source_chunk
+from skyoptics.kernels.orient import orient_chunk, polarise_chunk, source_chunk
 from skyoptics.kernels.plain import step_faces, step_plain, step_slabs
 from skyoptics.kernels.polyhedron import step_lanes
 from skyoptics.kernels.random import batch_key
@@ -104,7 +105,8 @@ class Stepping:
     """The same rays, inside, followed for HITS hits by lanes and by the plain loop: seconds a hit."""
 
     def __init__(self, shape: Shape, prepared: Prepared) -> None:
-        slabs, patches, scale, law, inverse_kappa, span, frame, radius, disc, index, stokes, _ = prepared.arguments
+        slabs, patches = prepared.bodies[0]
+        settings, law, pose, tilts, frame, disc, index, stokes, *_ = prepared.arguments
         self.state, codes = lanes.new_lanes()
         points = np.zeros(DIMENSIONS * lanes.CHUNK, np.float32)
         seeds = np.zeros(DIMENSIONS, np.uint32)
@@ -113,9 +115,10 @@ class Stepping:
         for first in range(0, lanes.WIDTH, lanes.CHUNK):
             part = self.state[first:]
             sobol_chunk(first, True, seeds, prepared.used, REVERSED_NUMBERS, CHUNK_TABLE, points)
-            source_chunk(part, points, frame, radius, disc, index)
-            orient_chunk(part, points, law, inverse_kappa, span)
-            enter_chunk(part, codes[first:], first, points, patches, sums, scale, stokes, frame[:3])
+            source_chunk(part, points, frame, settings[RADIUS], disc, index)
+            orient_chunk(part, points, law, settings[INVERSE_KAPPA], settings[SPAN], pose, tilts)
+            polarise_chunk(part, stokes, frame[:3])
+            enter_chunk(part, codes[first:], first, points, patches, sums, settings[SCALE])
         self.start = self.state.copy()
         self.slabs = slabs
         rows = [lanes.PX, lanes.PY, lanes.PZ, lanes.DX, lanes.DY, lanes.DZ, lanes.SI, lanes.SQ, lanes.SU, lanes.SV]

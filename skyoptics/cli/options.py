@@ -53,11 +53,11 @@ class NumberList(click.ParamType[tuple[Any, ...]]):
 
     name = "numbers"
 
-    def __init__(self, kind: type[int] | type[float], low: float, high: float) -> None:
-        self.kind, self.low, self.high = kind, low, high
+    def __init__(self, kind: type[int] | type[float], low: float, high: float, distinct: bool = True) -> None:
+        self.kind, self.low, self.high, self.distinct = kind, low, high, distinct
 
     def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> tuple[Any, ...]:
-        """Return distinct numbers inside the range."""
+        """Return numbers inside the range, distinct where that is asked for."""
         if isinstance(value, tuple):
             return value
         numbers = []
@@ -69,9 +69,29 @@ class NumberList(click.ParamType[tuple[Any, ...]]):
             if not self.low <= number <= self.high:
                 self.fail(f"{word} is out of range: {self.low:g} to {self.high:g} is allowed", param, ctx)
             numbers.append(number)
-        if len(set(numbers)) < len(numbers):
+        if self.distinct and len(set(numbers)) < len(numbers):
             self.fail("a number stands in the list twice", param, ctx)
         return tuple(numbers)
+
+
+class AzimuthElevation(click.ParamType[tuple[float, float]]):
+    """A viewing direction: azimuth and elevation in degrees, parted by a comma."""
+
+    name = "az,el"
+
+    def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> tuple[float, float]:
+        """Return azimuth (any turn) and elevation, -90 to 90 degrees."""
+        if isinstance(value, tuple):
+            return value
+        try:
+            azimuth, elevation = (float(word) for word in str(value).split(","))
+        except ValueError:
+            self.fail(f"{value!r} is no direction; give azimuth and elevation in degrees, such as 120.5,22", param, ctx)
+        if not (isfinite(azimuth) and -360.0 <= azimuth <= 360.0):
+            self.fail(f"azimuth {azimuth:g} is out of range: -360 to 360 degrees are allowed", param, ctx)
+        if not -90.0 <= elevation <= 90.0:
+            self.fail(f"elevation {elevation:g} is out of range: -90 to 90 degrees are allowed", param, ctx)
+        return azimuth, elevation
 
 
 class Between(click.FloatRange):

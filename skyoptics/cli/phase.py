@@ -89,11 +89,75 @@ def drop(csv: Path | None, as_json: bool, **options: Any) -> None:
 
 @command.command("crystal")
 @click.option(
+    "--shape",
+    type=Word(["prism", "bipyramid", "truncated-bipyramid", "pyramid", "trigonal"]),
+    default="prism",
+    show_default=True,
+    help="Hexagonal prism; two pyramids base to base; the same cut off by basal faces, with a prism between; a prism with "
+    "a pyramid on its upper end; a prism of triangular cross-section.",
+)
+@click.option(
     "--aspect",
     type=Between(0.01, 100),
-    default=1.0,
+    help="Length of the prism part along the c-axis ÷ diameter across corners; default 1, or that of a typical crystal of "
+    "the shape; none for a bipyramid.",
+)
+@click.option(
+    "--pyramid-upper",
+    type=Between(0.001, 1),
+    help="Height of the upper pyramid ÷ that of a pointed one (truncated-bipyramid, pyramid).",
+)
+@click.option(
+    "--pyramid-lower",
+    type=Between(0.001, 1),
+    help="Height of the lower pyramid ÷ that of a pointed one (truncated-bipyramid).",
+)
+@click.option(
+    "--trigonality", type=Between(0, 1), help="Of a trigonal prism: 0 a regular hexagon, 1 (default) a triangle."
+)
+@click.option(
+    "--miller",
+    type=NumberList(int, -9, 9, distinct=False),
+    default="1,0,-1,1",
     show_default=True,
-    help="Length along the c-axis ÷ diameter across corners.",
+    help="Miller index of the pyramid faces: h,0,-h,l or h,h,-2h,l.",
+)
+@click.option(
+    "--face-distances",
+    type=NumberList(float, 0.05, 20, distinct=False),
+    help="Six factors on the distances of the side faces from the c-axis; default a regular hexagon.",
+)
+@click.option(
+    "--aspect-spread", type=Between(0, 1), default=0.0, help="Standard deviation of the logarithm of the aspect."
+)
+@click.option(
+    "--distance-spread",
+    type=Between(0, 0.5),
+    default=0.0,
+    help="Relative standard deviation of the distances of the faces.",
+)
+@click.option(
+    "--diameter-um",
+    type=Between(10, 10000),
+    default=100.0,
+    show_default=True,
+    help="Diameter across corners, for --diffraction [µm].",
+)
+@click.option("--diffraction", is_flag=True, help="Spread the light by diffraction.")
+@click.option(
+    "--angle-spread-deg",
+    type=Between(0, 5),
+    default=0.0,
+    help="Standard deviation of the angle between two faces [°].",
+)
+@click.option("--birefringence", is_flag=True, help="Tell the two indices of ice apart by polarisation.")
+@click.option(
+    "--extraordinary-index", type=Between(1.0001, 2), help="Second index of --index, which is then the ordinary one."
+)
+@click.option(
+    "--draw",
+    type=click.Path(path_type=Path),
+    help="Draw the crystal into a PNG or SVG file, and do nothing else unless --csv or --json is given too.",
 )
 @WAVELENGTHS
 @click.option("--index", type=Between(1.0001, 2), help="Constant refractive index instead of that of ice.")
@@ -103,14 +167,21 @@ def drop(csv: Path | None, as_json: bool, **options: Any) -> None:
 @CSV
 @json_option
 @sampling_options
-def crystal(csv: Path | None, as_json: bool, **options: Any) -> None:
-    """Scattering curve of hexagonal ice prisms in random orientation.
+def crystal(csv: Path | None, as_json: bool, draw: Path | None, **options: Any) -> None:
+    r"""Scattering curve of ice crystals in random orientation, named halos apart; drawing of a crystal.
 
+    \b
     Example: skyoptics phase crystal --aspect 1.0 --wavelength-nm 550 --step-deg 0.05 --csv halo.csv
+             skyoptics phase crystal --shape truncated-bipyramid --draw crystal.png
     """
     from skyoptics.rendering import curve
 
-    _put_out(curve.crystal, curve.CrystalCurve(**options), csv, as_json)
+    asked = curve.CrystalCurve(**options)
+    if draw is not None:
+        curve.draw(asked, draw, click.echo)
+        if csv is None and not as_json:
+            return
+    _put_out(curve.crystal, asked, csv, as_json)
 
 
 def _put_out(work: Any, asked: Any, csv: Path | None, as_json: bool) -> None:

@@ -8,7 +8,7 @@ from typing import Any
 
 import click
 
-from skyoptics.cli.options import SceneFile, Word, json_option, sampling_options
+from skyoptics.cli.options import AzimuthElevation, SceneFile, Word, json_option, sampling_options
 
 
 @click.command("render", short_help="Scene file to picture and report.")
@@ -28,6 +28,18 @@ from skyoptics.cli.options import SceneFile, Word, json_option, sampling_options
     "--processes", type=click.IntRange(1, 1024), default=1, show_default=True, help="Worker processes that trace."
 )
 @click.option("--noise-map", is_flag=True, help="Write a map of the error of displayed lightness too.")
+@click.option("--labels", is_flag=True, help="Write an annotated copy too: arcs by name, horizon, compass, scale.")
+@click.option(
+    "--only",
+    metavar="ARC",
+    help="Show the light of one named arc alone (skyoptics scenes --arcs lists them), or other: light of no name.",
+)
+@click.option(
+    "--explain",
+    type=AzimuthElevation(),
+    metavar="AZ,EL",
+    help="Say what makes a direction bright, azimuth and elevation in degrees; renders nothing.",
+)
 @json_option
 @sampling_options
 def command(
@@ -41,14 +53,20 @@ def command(
     processes: int,
     noise_map: bool,
     stokes: bool,
+    labels: bool,
+    only: str | None,
+    explain: tuple[float, float] | None,
     as_json: bool,
     quality: str,
     seed: int,
     threads: int | None,
 ) -> None:
-    """Render SCENE: a TOML file, or the name of an example scene (see: skyoptics scenes).
+    r"""Render SCENE: a TOML file, or the name of an example scene (see: skyoptics scenes).
 
+    \b
     Example: skyoptics render double-bow --set light.elevation_deg=10 --quality draft
+             skyoptics render mixed-whole-sky --only circumzenithal
+             skyoptics render mixed-whole-sky --explain 180,42.5
     """
     from skyoptics.scene.files import safe_name
     from skyoptics.scene.load import load
@@ -60,18 +78,23 @@ def command(
     folder = out or Path("outputs", name)
     from skyoptics.cli import progress
     from skyoptics.rendering import output
-    from skyoptics.rendering.run import Settings, render, usable_cores
+    from skyoptics.rendering.run import Settings, render, told_apart, usable_cores
 
     settings = Settings(quality, seed, threads or usable_cores(), processes, rays)
-    wanted = output.Wanted(folder, name, data, extra, noise_map)
+    if explain is not None:
+        _explain(described, scene, explain, settings, as_json)
+        return
+    wanted = output.Wanted(folder, name if only is None else f"{name}.{only}", data, extra, noise_map, labels)
     if dry_run:
         _estimate(described, scene, settings, wanted, stokes, as_json)
         return
+    if only is not None:
+        told_apart(only)
     output.prepare(folder)
     progress.note_first_compilation()
-    words = _command(scene, overrides, wanted, settings, stokes)
+    words = _command(scene, overrides, wanted, settings, stokes, only)
     with progress.shown() as tell:
-        result = render(described, str(scene), settings, tell, data, wanted.preview, stokes)
+        result = render(described, str(scene), settings, tell, data, wanted.preview, stokes, only)
     if changed := output.traced_otherwise(wanted, result.report):
         click.echo(f"note: {changed}", err=True)
     files = output.write(result, described, wanted, words)
@@ -90,14 +113,18 @@ def command(
         click.echo(last)
 
 
-def _command(scene: Path, overrides: tuple[str, ...], wanted: Any, settings: Any, stokes: bool) -> list[str]:
+def _command(
+    scene: Path, overrides: tuple[str, ...], wanted: Any, settings: Any, stokes: bool, only: str | None
+) -> list[str]:
     """Return the words that make the picture again, run beside the scene file."""
     words = ["skyoptics", "render", scene.name, "--seed", str(settings.seed), "--quality", settings.quality]
     if settings.rays is not None:
         words += ["--rays", str(settings.rays)]
     for override in overrides:
         words += ["--set", override]
-    flags = {"--data": wanted.data, "--stokes": stokes, "--noise-map": wanted.noise_map}
+    if only is not None:
+        words += ["--only", only]
+    flags = {"--data": wanted.data, "--stokes": stokes, "--noise-map": wanted.noise_map, "--labels": wanted.labels}
     words += [flag for flag, given in flags.items() if given]
     return words + [word for name in wanted.extra for word in ("--image", name)]
 
@@ -116,3 +143,28 @@ def _estimate(scene: Any, path: Path, settings: Any, files: Any, stokes: bool, a
     click.echo(f"memory          {wanted['memory_bytes'] / 1e9:.2f} GB")
     click.echo(f"time            about {wanted['seconds']:.0f} s, kernels compiled")
     click.echo("files           " + "\n                ".join(wanted["files"]))
+
+
+def _explain(scene: Any, path: Path, where: tuple[float, float], settings: Any, as_json: bool) -> None:
+    """Print what makes a direction bright."""
+    from skyoptics.cli import progress
+    from skyoptics.rendering.explain import explain
+
+    progress.note_first_compilation()
+    with progress.shown() as tell:
+        found = explain(scene, str(path), *where, settings, tell)
+    if as_json:
+        click.echo(json.dumps(found, ensure_ascii=False))
+        return
+    click.echo(
+        f"azimuth {found['azimuth_deg']:g}°, elevation {found['elevation_deg']:g}°, {found['from_source_deg']:.2f}° from the "
+        f"source: {found['luminance_cd_m2']:.4g} cd/m², mean over {found['width_deg']:g}°"
+    )
+    for entry in found["shares"]:
+        what = entry["title"] + (f" ({entry['arc']})" if entry["particles"] and entry["arc"] != "other" else "")
+        by = f", {entry['particles']}" if entry["particles"] else ""
+        error = f" ± {100.0 * entry['error']:.1f}" if entry["error"] else ""
+        click.echo(f"{100.0 * entry['share']:6.1f}{error} %  {what}{by}")
+        if entry["paths"]:
+            paths = ", ".join(f"{path['faces']} {100.0 * path['part']:.0f} %" for path in entry["paths"])
+            click.echo(f"            faces met: {paths}")

@@ -6,10 +6,10 @@ from the face sequence, and checked by following rays.
 
 from __future__ import annotations
 
-from skyoptics.crystals.arc_feature import PILLAR_TILT, Crystals, Feature
+from skyoptics.crystals.arc_feature import ANGLE_X, DERIVED, PILLAR_TILT, Crystals, Feature
+from skyoptics.crystals.arc_pyramids import PYRAMID_ARCS
 
 TAPE = "Tape, Atmospheric Halos (AGU 1994), from memory"
-ANGLE_X = "Tape & Moilanen, Atmospheric Halos and the Search for Angle x (AGU 2006), from memory"
 GREENLER = "Greenler, Rainbows, Halos, and Glories (Cambridge 1980), from memory"
 BRAVAIS = "Bravais, Mémoire sur les halos, J. École Polytechnique 18, cahier 31 (1847)"
 HASTINGS = "Hastings, A general theory of halos, Mon. Weather Rev. 48, 322 (1920), from memory"
@@ -20,7 +20,6 @@ LILJEQUIST = "Liljequist, Halo-phenomena and ice-crystals, Norw.-Brit.-Swed. Ant
 MULTIPLE = (
     "Tränkle & Greenler, Multiple-scattering effects in halo phenomena, J. Opt. Soc. Am. A 4, 591 (1987), from memory"
 )
-DERIVED = "from the faces"
 
 PLATE, THICK, COLUMN, THIN = 0.3, 1.0, 2.0, 0.2
 
@@ -30,7 +29,7 @@ def _circle(degrees: int, sequence: tuple[int, ...], faces: str, told: str, pyra
         f"halo_{degrees}",
         f"{degrees}° halo",
         "circle",
-        (Crystals("random", (sequence,), "truncated bipyramid" if pyramid else "prism"),),
+        (Crystals("random", (sequence, sequence[::-1]), "truncated bipyramid" if pyramid else "prism"),),
         f"circle about the sun at least deviation of the wedge between {faces}, red inside",
         "at every sun elevation",
         told,
@@ -474,4 +473,5 @@ TABLE: tuple[Feature, ...] = (
         (MULTIPLE, GREENLER, DERIVED),
         scatterings=2,
     ),
+    *PYRAMID_ARCS,
 )

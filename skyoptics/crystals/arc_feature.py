@@ -12,6 +12,9 @@ KINDS = ("circle", "curve", "fold", "spot", "diffuse")
 PARTS = ("all", "rising", "sinking", "anthelic")
 """Which light of its faces a feature keeps, see `skyoptics.crystals.arc_regions.in_part`."""
 
+ANGLE_X = "Tape & Moilanen, Atmospheric Halos and the Search for Angle x (AGU 2006), from memory"
+DERIVED = "from the faces"
+
 PILLAR_TILT = 2.0 * DEG
 """Tilt spread for which the sun pillar is drawn [rad]."""
 PILLAR_FROM = 0.5 * DEG

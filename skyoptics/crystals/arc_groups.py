@@ -13,7 +13,7 @@ from functools import cache
 import numpy as np
 
 from skyoptics.crystals.arc_data import TABLE
-from skyoptics.crystals.faces import relabelled, signature, symmetries
+from skyoptics.crystals.faces import relabelled, signature, symmetries, unfold
 from skyoptics.errors import DomainError, nearest
 
 LAWS = ("random", "plate", "column", "parry", "lowitz")
@@ -43,13 +43,19 @@ def law_symmetries(law: str) -> tuple[tuple[int, ...], tuple[int, ...]]:
 
 @cache
 def group_key(law: str, sequence: tuple[int, ...]) -> tuple[float, ...]:
-    """Return what all sequences that belong together under a law have in common."""
+    """Return what all sequences that belong together under a law have in common: the least of their signatures."""
     turns, mirrors = law_symmetries(law)
-    return min(signature(_moved(sequence, number)) for number in turns + mirrors)
+    operations = symmetries()[list(turns + mirrors)]
+    path = unfold(sequence)
+    parts = [(operations @ path.mirror @ operations.transpose(0, 2, 1)).reshape(len(operations), 9)]
+    if path.wedge > 1e-6:
+        parts += [operations @ path.entry, operations @ path.exit]
+    rounded = np.round(np.concatenate(parts, axis=1), 5) + 0.0
+    return min(map(tuple, rounded.tolist()))
 
 
 @cache
-def _moved(sequence: tuple[int, ...], operation: int) -> tuple[int, ...]:
+def moved(sequence: tuple[int, ...], operation: int) -> tuple[int, ...]:
     """Return the faces onto which an operation maps a sequence."""
     return tuple(relabelled(label, operation) for label in sequence)
 
@@ -96,15 +102,15 @@ def classes(law: str, sequences: Sequence[tuple[int, ...]]) -> list[list[tuple[i
     those given where that makes an effect the same, and every turn that does is kept.
     """
     turns, mirrors = law_symmetries(law)
-    given = dict.fromkeys((*sequences, *(_moved(faces, number) for number in mirrors for faces in sequences)))
+    given = dict.fromkeys((*sequences, *(moved(faces, number) for number in mirrors for faces in sequences)))
     result: list[list[tuple[int, ...]]] = []
     for sequence in given:
-        moved = list(dict.fromkeys((sequence, *(_moved(sequence, number) for number in turns))))
+        alternatives = list(dict.fromkeys((sequence, *(moved(sequence, number) for number in turns))))
         for members in result:
-            alike = [faces for faces in moved if signature(faces) == signature(members[0])]
+            alike = [faces for faces in alternatives if signature(faces) == signature(members[0])]
             if alike:
                 members.extend(faces for faces in alike if faces not in members)
                 break
         else:
-            result.append([faces for faces in moved if signature(faces) == signature(sequence)])
+            result.append([faces for faces in alternatives if signature(faces) == signature(sequence)])
     return result

@@ -17,12 +17,13 @@ from itertools import pairwise
 
 import numpy as np
 
+from skyoptics.crystals import habits
 from skyoptics.crystals.arc_data import TABLE
-from skyoptics.crystals.arc_feature import PILLAR_FROM, Feature
+from skyoptics.crystals.arc_feature import PILLAR_FROM, Crystals, Feature
 from skyoptics.crystals.arc_groups import classes
 from skyoptics.crystals.arc_loci import STEP, Branch, column_fold, curve, runs
 from skyoptics.crystals.arc_regions import circle, in_part, inside, outline, spots, tangent_join
-from skyoptics.crystals.faces import unfold
+from skyoptics.crystals.faces import PRISM, unfold
 from skyoptics.crystals.folds import fold
 from skyoptics.crystals.passage import FREE_ANGLES, brightness, rotations
 from skyoptics.crystals.shapes import Shape, hexagonal_prism
@@ -125,11 +126,23 @@ def belongs(
     """
     entry = feature(name)
     view = direction(azimuth, elevation)
-    pillar = tilt >= PILLAR_FROM
-    by_tilt = {"subsun": not pillar, "sun_pillar": pillar}.get(name, True)
-    if not by_tilt or not _named_so(entry, sun_elevation, index):
+    if not goes_by_name(entry, sun_elevation, index, tilt):
         return np.zeros(view.shape[:-1], dtype=bool)
     return in_part(entry.part, view, sun_elevation)
+
+
+def goes_by_name(entry: Feature, sun_elevation: float, index: float, tilt: float = 0.0) -> bool:
+    """Return whether light of a feature's faces goes by its name at all: the sun's elevation and the tilt decide.
+
+    Parameters
+    ----------
+    entry : Feature
+    sun_elevation, index, tilt :
+        As in `belongs`.
+    """
+    pillar = tilt >= PILLAR_FROM
+    by_tilt = {"subsun": not pillar, "sun_pillar": pillar}.get(entry.name, True)
+    return by_tilt and _named_so(entry, sun_elevation, index)
 
 
 def within(name: str, azimuth: ArrayLike, elevation: ArrayLike, sun_elevation: float, index: float) -> BoolArray:
@@ -175,7 +188,7 @@ def _named_so(entry: Feature, sun_elevation: float, index: float) -> bool:
 def _lit_views(entry: Feature, sun_elevation: float, index: float) -> list[FloatArray]:
     """Return the lit branches of a curve or fold."""
     crystals = entry.crystals[0]
-    shape = hexagonal_prism(crystals.aspect)
+    shape = _shape(crystals)
     found: list[tuple[Branch, FloatArray]] = []
     for alike in classes(crystals.law, crystals.sequences):
         for branch in _branches(entry, crystals.law, alike, sun_elevation, index):
@@ -196,12 +209,18 @@ def _lit_views(entry: Feature, sun_elevation: float, index: float) -> list[Float
     return views
 
 
+def _shape(crystals: Crystals) -> Shape:
+    if crystals.shape == "prism":
+        return hexagonal_prism(crystals.aspect)
+    return habits.shape(habits.Habit("truncated-bipyramid", crystals.aspect))
+
+
 def _branches(
     entry: Feature, law: str, alike: list[tuple[int, ...]], sun_elevation: float, index: float
 ) -> list[Branch]:
     if entry.kind == "curve":
         return curve(law, alike, sun_elevation, index)
-    if law == "column":
+    if law == "column" and max(alike[0]) <= PRISM[-1]:
         return column_fold(alike, sun_elevation, index)
     return fold(law, alike[0], sun_elevation, index)
 

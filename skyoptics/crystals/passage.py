@@ -136,7 +136,8 @@ def brightness(
         factors of unpolarised light. Meant to tell where an arc is lit, and roughly how well: polarisation between
         faces is left out, and the share comes in steps.
     """
-    labels = face_labels(shape.face_normals)
+    present = shape.face_areas > 0.0
+    labels = [label if there else 0 for label, there in zip(face_labels(shape.face_normals), present, strict=True)]
     missing = [label for label in sequence if label not in labels]
     if missing:
         raise DomainError(f"a {shape.label} has no face {missing[0]}")

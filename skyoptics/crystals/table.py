@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import Any
 
 import numpy as np
 
 from skyoptics.crystals.orientations import Orientation
 from skyoptics.crystals.shapes import Shape
-from skyoptics.crystals.tracing import Prepared, Tally, prepare, trace_angles
+from skyoptics.crystals.sorting import Sorter
+from skyoptics.crystals.tracing import IDEAL, Imperfections, Prepared, Tally, prepare, trace_angles
 from skyoptics.errors import DomainError
 from skyoptics.optics.batches import Executor, batches_needed, in_order
 from skyoptics.optics.bins import Bins
@@ -25,7 +26,7 @@ UPWARDS = np.array([0.0, 0.0, 1.0])
 
 
 def scattering_table(
-    shape: Shape,
+    shape: Shape | Sequence[Shape],
     index: Callable[[FloatArray], Any],
     bins: Bins,
     *,
@@ -36,13 +37,15 @@ def scattering_table(
     executor: Executor | None = None,
     progress: Callable[[int, int], None] | None = None,
     max_batches: int = 4096,
+    imperfections: Imperfections = IDEAL,
+    sorter: Sorter | None = None,
 ) -> ScatteringTable:
     """Trace randomly oriented crystals.
 
     Parameters
     ----------
-    shape : Shape
-        The crystal.
+    shape : Shape, or several
+        The crystal; of several shapes equal numbers.
     index : callable
         Wavelengths [m] → refractive index n + ik relative to the air.
     bins : Bins
@@ -61,13 +64,17 @@ def scattering_table(
         Called with batches done and now thought to be needed.
     max_batches : int
         Of one spectral bin.
+    imperfections : Imperfections
+        Default none.
+    sorter : Sorter, optional
+        Keeps named halos apart.
 
     Returns
     -------
     ScatteringTable
-        One part "rays", ∫P11 dΩ = 4π, no diffraction; light that went straight on through parallel faces is in the first
-        bin. `asymmetry` counts it. `report` states rays, reached error, absorbed, what the cut-off would have dropped and
-        the share that went straight on.
+        One part "rays", with a sorter one for each name that has light, ∫P11 dΩ = 4π over all, no diffraction; light that
+        went straight on through parallel faces is in the first bin. `asymmetry` counts it. `report` states rays, reached
+        error, absorbed, what the cut-off would have dropped and the share that went straight on.
 
     Raises
     ------
@@ -80,39 +87,56 @@ def scattering_table(
         raise DomainError(f"at least {LEAST_BATCHES} batches are needed for an error estimate, not {max_batches}")
     random = Orientation("random")
     prepared = [
-        prepare(shape, random, index, edges, UPWARDS, size=size, spectral_bin=row)
+        prepare(
+            shape,
+            random,
+            index,
+            edges,
+            UPWARDS,
+            size=size,
+            spectral_bin=row,
+            imperfections=imperfections,
+            sorter=sorter,
+        )
         for row, edges in enumerate(bins.edges)
     ]
-    sums = np.zeros((len(bins), count, 6))
-    squares = np.zeros((len(bins), count))
+    names = ("rays",) if sorter is None else sorter.names
+    sums = np.zeros((len(bins), len(names), count, 6))
+    squares = np.zeros((len(bins), len(names), count))
+    whole = np.zeros((len(bins), count))
     tallies = [Tally(0, 0.0, 0.0, 0.0, 0.0, 0.0, 0, 0.0, 0.0) for _ in range(len(bins))]
     done, needed, error = 0, LEAST_BATCHES, np.inf
     while done < needed:
         tasks = ((prepared[row], count, seed, batch) for batch in range(done, needed) for row in range(len(bins)))
         for number, (table, tally) in enumerate(in_order(_batch, tasks, executor), start=done * len(bins)):
             row = number % len(bins)
+            table = table.reshape(sums.shape[1:])
             sums[row] += table
-            squares[row] += table[:, 0] ** 2
+            squares[row] += table[..., 0] ** 2
+            whole[row] += table[..., 0].sum(axis=0) ** 2
             tallies[row] += tally
             if progress is not None:
                 progress(number + 1, needed * len(bins))
         done = needed
-        spread = np.sqrt(np.maximum(squares - sums[..., 0] ** 2 / done, 0.0) * done / (done - 1.0))
-        relative = spread.sum(axis=1) / sums[..., 0].sum(axis=1)
+        power = sums[..., 0].sum(axis=1)
+        relative = _spread(whole, power, done).sum(axis=1) / power.sum(axis=1)
         error = float(relative.max())
         needed = batches_needed(done, error, relative_error, max_batches)
     edges = np.linspace(0.0, np.pi, count + 1)
     scattered = np.array([tally.scattered for tally in tallies])
     incident = np.array([tally.incident for tally in tallies])
-    scale = 4.0 * np.pi / (sums[..., 0].sum(axis=1)[:, None] * (-2.0 * np.pi * np.diff(np.cos(edges))))
+    scale = 4.0 * np.pi / (power.sum(axis=1)[:, None] * (-2.0 * np.pi * np.diff(np.cos(edges))))
+    scale = scale[:, None, :]
+    spread = _spread(squares, sums[..., 0], done)
+    lit = [number for number in range(len(names)) if sums[:, number, :, 0].any()]
     return ScatteringTable(
         angle=0.5 * (edges[1:] + edges[:-1]),
         wavelength=bins.centre,
-        elements=np.moveaxis(sums * scale[..., None], 0, 1)[None],
-        error=(spread * scale).T[None],
+        elements=np.moveaxis((sums * scale[..., None])[:, lit], 0, 2),
+        error=np.moveaxis((spread * scale)[:, lit], 0, 2),
         albedo=scattered / (scattered + np.array([tally.absorbed for tally in tallies])),
         asymmetry=np.array([tally.cosine for tally in tallies]) / scattered,
-        parts=("rays",),
+        parts=tuple(names[number] for number in lit),
         edges=edges,
         report={
             "batches": done,
@@ -127,6 +151,11 @@ def scattering_table(
             "straight_on": [tally.forward / tally.incident for tally in tallies],
         },
     )
+
+
+def _spread(squares: FloatArray, sums: FloatArray, batches: int) -> FloatArray:
+    """Return one standard error of a sum over batches."""
+    return np.asarray(np.sqrt(np.maximum(squares - sums**2 / batches, 0.0) * batches / (batches - 1.0)))
 
 
 def _batch(prepared: Prepared, count: int, seed: int, batch: int) -> tuple[FloatArray, Tally]:

@@ -21,7 +21,7 @@ Pixel coordinates: pixel centres are whole numbers, row 0 on top, column 0 on th
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.polynomial import Chebyshev, Polynomial
@@ -231,6 +231,17 @@ class Directions:
         if self.kind == CYLINDRICAL:
             return np.sqrt(solid) if self.shape[1] > 1 else np.full_like(solid, self.map[3])
         return np.sqrt(np.where(solid > 0.0, solid, self.map[0] ** -2))
+
+    def coarse(self, side: int) -> Directions:
+        """Return the grid whose cells are side · side pixels of this one, the first with its corner in the first pixel."""
+        shape = -(-self.shape[0] // side), -(-self.shape[1] // side)
+        shift = 0.5 * (side - 1)
+        if self.kind == CYLINDRICAL:
+            longitude_first, longitude_step, latitude_first, latitude_step = self.map
+            first, top = longitude_first + shift * longitude_step, latitude_first - shift * latitude_step
+            return replace(self, shape=shape, map=(first, side * longitude_step, top, side * latitude_step))
+        scale, column, row, q_max = self.map
+        return replace(self, shape=shape, map=(scale / side, (column - shift) / side, (row - shift) / side, q_max))
 
     def packed(self) -> Float32Array:
         """Return the grid as one float32 array for kernels.

@@ -21,6 +21,7 @@ from skyoptics.kernels.lanes import (
     F0,
     F1,
     F2,
+    GROUP,
     HITS,
     PATH_HIGH,
     PATH_LOW,
@@ -40,8 +41,8 @@ _TINY = np.float32(1e-24)
 
 EXIT_COLUMNS = 14
 """Columns of the exit list: direction (3), Stokes (4), e⊥ (3), direction before the crystal (3), 0; all world."""
-EXIT_CODES = 5
-"""Columns of the exit list's whole numbers: ray, faces met, low and high part of the path code, cell of the grid."""
+EXIT_CODES = 6
+"""Columns of the exit list's whole numbers: ray, faces met, low and high part of the path code, cell of the grid, group."""
 
 ANGLE_SUMS = 6
 """P11, P12, P22, P33, P34, P44 of an angle table."""
@@ -81,11 +82,12 @@ def add_angles(
     spots: Uint32Array,
     n: int,
     per_state: Any,
+    count: int,
     level: Float32Array,
     table: FloatArray,
     moments: FloatArray,
 ) -> None:
-    """Add to an angle table, flat (nθ * ANGLE_SUMS,) float64; moments (2,) float64: Σ I cos θ, Σ I within 2e-5 rad.
+    """Add to angle tables, flat (groups * count * ANGLE_SUMS,) float64; moments (2,) float64: Σ I cos θ, Σ I within 2e-5 rad.
 
     Rays come in four shares by ray number (`polarisation_share`): two unpolarised, one linear (1, 1, 0, 0), one circular
     (1, 0, 0, 1), e⊥ = level (3,) world. In the frame of the scattering plane an isotropic cloud has I = P11 + P12 q,
@@ -99,7 +101,7 @@ def add_angles(
             continue
         ex, ey, ez = state[EX + lane], state[EY + lane], state[EZ + lane]
         wx, wy, wz = state[WX + lane], state[WY + lane], state[WZ + lane]
-        spot = np.int64(spots[lane]) * ANGLE_SUMS
+        spot = (np.int64(codes[GROUP + lane]) * count + np.int64(spots[lane])) * ANGLE_SUMS
         table[spot] += power
         cosine = np.float64(ex * wx + ey * wy + ez * wz)
         moments[0] += power * cosine
@@ -163,6 +165,7 @@ def list_exits(
             for column, row in enumerate((RAY, HITS, PATH_LOW, PATH_HIGH)):
                 numbers[count, column] = codes[row + lane]
             numbers[count, 4] = spots[lane]
+            numbers[count, 5] = codes[GROUP + lane]
         count += 1
     return count
 

@@ -58,6 +58,9 @@ from skyoptics.kernels.lanes import (
     SX,
     SY,
     SZ,
+    TX,
+    TY,
+    TZ,
     WX,
     WY,
     WZ,
@@ -82,15 +85,13 @@ def enter_chunk(
     patches: Float32Array,
     sums: Float32Array,
     scale: Any,
-    stokes: Float32Array,
-    level: Float32Array,
 ) -> None:
-    """Put CHUNK new rays on the crystal, lanes 0 … CHUNK − 1; rows R, W, INDEX must be there.
+    """Put CHUNK new rays on the crystal, lanes 0 … CHUNK − 1.
 
-    ray: number of the first of them; scale: 1 / reference area, so that a ray's power is its crystal's area across the
-    beam in units of the reference; stokes (4,): incident, I = 1, with e⊥ = level (3,), world; sums: scratch, ((patches + 1)
-    * CHUNK,). The face is chosen by its area across the beam, the point evenly on it: no ray misses. Row E takes what the
-    outside reflects.
+    Rows R, W, INDEX must be there, and the incident Stokes vector in rows EI to EV with its e⊥ [world] in rows T. ray:
+    number of the first of them; scale: 1 / reference area, so that a ray's power is its crystal's area across the beam in
+    units of the reference, times the incident I; sums: scratch, ((patches + 1) * CHUNK,). The face is chosen by its area
+    across the beam, the point evenly on it: no ray misses. Row E takes what the outside reflects.
     """
     for lane in range(CHUNK):
         x, y, z = state[WX + lane], state[WY + lane], state[WZ + lane]
@@ -109,7 +110,7 @@ def enter_chunk(
     for lane in range(CHUNK):
         total = sums[count * CHUNK + lane]
         state[SI + lane] = total * scale
-        state[SUM_IN + lane] = state[SUM_IN + lane] + total * scale
+        state[SUM_IN + lane] = state[SUM_IN + lane] + total * scale * state[EI + lane]
         state[LENGTH + lane] = total * (points[ENTRY_FIRST * CHUNK + lane] * _BELOW)
         state[MET + lane] = F0
     for j in range(1, count + 1):
@@ -138,14 +139,15 @@ def enter_chunk(
         codes[HITS + lane] = np.uint32(1)
         codes[PATH_LOW + lane] = np.uint32(np.int32(state[MET + lane]) + 1)
         codes[PATH_HIGH + lane] = np.uint32(0)
-    q0, u0, v0 = stokes[1], stokes[2], stokes[3]
-    hx, hy, hz = level[0], level[1], level[2]
     for lane in range(CHUNK):
+        hx, hy, hz = state[TX + lane], state[TY + lane], state[TZ + lane]
         dx, dy, dz = state[DX + lane], state[DY + lane], state[DZ + lane]
         nx, ny, nz = state[NX + lane], state[NY + lane], state[NZ + lane]
         n = state[INDEX + lane]
-        power = state[SI + lane]
-        # e⊥ turns from level to the normal of the plane of incidence
+        area = state[SI + lane]
+        power = area * state[EI + lane]
+        q0, u0, v0 = area * state[EQ + lane], area * state[EU + lane], area * state[EV + lane]
+        # e⊥ turns from the incident one to the normal of the plane of incidence
         ox = state[R00 + lane] * hx + state[R10 + lane] * hy + state[R20 + lane] * hz
         oy = state[R01 + lane] * hx + state[R11 + lane] * hy + state[R21 + lane] * hz
         oz = state[R02 + lane] * hx + state[R12 + lane] * hy + state[R22 + lane] * hz
@@ -156,9 +158,9 @@ def enter_chunk(
         b = sx * (dy * oz - dz * oy) + sy * (dz * ox - dx * oz) + sz * (dx * oy - dy * ox)
         norm = F1 / (a * a + b * b)
         cosine, sine = (a * a - b * b) * norm, F2 * a * b * norm
-        q = power * (cosine * q0 - sine * u0)
-        u = power * (sine * q0 + cosine * u0)
-        v = power * v0
+        q = cosine * q0 - sine * u0
+        u = sine * q0 + cosine * u0
+        v = v0
         # Fresnel from outside
         ci = -(dx * nx + dy * ny + dz * nz)
         inverse = F1 / n

@@ -15,7 +15,8 @@ above 0); e∥ = propagation × e⊥. At a face e⊥ is the normal of the plane 
 
 Path code: 5 bits for each face met, face + 1 of the entry face first, the face of exit last; the newest sits lowest.
 `PATH_LOW` holds the last six faces, `PATH_HIGH` the six before; a path of more than twelve faces has HITS > 12 and is
-reported as `LONGER`.
+reported as `LONGER`. `TRAIL` holds what names need of a path of any length, `GROUP` the name of what leaves
+and `CELL` where that goes (`skyoptics.kernels.grouping`).
 """
 
 from __future__ import annotations
@@ -72,8 +73,11 @@ SUM_ROULETTE, SUM_BELOW = next(_rows), next(_rows)
 ROWS = next(_rows) // STRIDE
 
 # Rows of the uint32 array
-RAY, HITS, PATH_LOW, PATH_HIGH = 0, STRIDE, 2 * STRIDE, 3 * STRIDE
-CODE_ROWS = 4
+RAY, HITS, PATH_LOW, PATH_HIGH, TRAIL = 0, STRIDE, 2 * STRIDE, 3 * STRIDE, 4 * STRIDE
+CODES_KEPT = 5
+"""Rows up to here move with a ray when the pool is packed."""
+GROUP, CELL = CODES_KEPT * STRIDE, (CODES_KEPT + 1) * STRIDE
+CODE_ROWS = CODES_KEPT + 2
 
 PATH_FACES = 12
 LONGER = (1 << 60) - 1

@@ -141,6 +141,7 @@ def trace_plain(
     law: int,
     inverse_kappa: float,
     span: float,
+    pose: FloatArray,
     frame: FloatArray,
     radius: float,
     disc: FloatArray,
@@ -188,6 +189,18 @@ def trace_plain(
             r00, r10, r20 = c, s, 0.0
             r01, r11, r21 = -s, c, 0.0
             r02, r12, r22 = 0.0, 0.0, 1.0
+        elif law == 4:  # Z(φ) Y(β) Z(ψ) A, column by column
+            psi = 2.0 * np.pi * uniform(key_low, key_high, number, 8)
+            u, v = np.sin(psi), np.cos(psi)
+            x, y, z = v * pose[0] - u * pose[3], u * pose[0] + v * pose[3], pose[6]
+            x, r20 = pose[9] * x + pose[10] * z, pose[9] * z - pose[10] * x
+            r00, r10 = c * x - s * y, s * x + c * y
+            x, y, z = v * pose[1] - u * pose[4], u * pose[1] + v * pose[4], pose[7]
+            x, r21 = pose[9] * x + pose[10] * z, pose[9] * z - pose[10] * x
+            r01, r11 = c * x - s * y, s * x + c * y
+            x, y, z = v * pose[2] - u * pose[5], u * pose[2] + v * pose[5], pose[8]
+            x, r22 = pose[9] * x + pose[10] * z, pose[9] * z - pose[10] * x
+            r02, r12 = c * x - s * y, s * x + c * y
         else:
             a, b = 0.0, 1.0
             if law == 2:

@@ -28,7 +28,7 @@ from numba import njit
 from skyoptics.kernels.elementary import decay
 from skyoptics.kernels.lanes import (
     ABSORPTION,
-    CODE_ROWS,
+    CODES_KEPT,
     COSINE,
     DX,
     DY,
@@ -308,7 +308,7 @@ def pack(state: Float32Array, codes: Uint32Array, n: int, holes: Uint32Array, mo
         for row in range(KEPT):
             start = np.uint64(row * STRIDE)
             state[start + to] = state[start + of]
-        for row in range(CODE_ROWS):
+        for row in range(CODES_KEPT):
             start = np.uint64(row * STRIDE)
             codes[start + to] = codes[start + of]
     return live

@@ -16,6 +16,8 @@ Dimension numbers (one table for all tracers):
  6-7  point on the source's disc
  8    shape (aspect, face distance)
  9+   Russian roulette at hit number (dimension - 9)
+2²⁴+  normals of faces askew, four a hit
+2²⁵+  angle of diffraction, two a hit
 ====  =======================================================
 """
 

@@ -143,6 +143,17 @@ def ice(medium: str = "air") -> RefractiveIndex:
     )
 
 
+def shifted(index: RefractiveIndex, by: float) -> RefractiveIndex:
+    """Return an index with a number added to its real part."""
+    return RefractiveIndex(
+        f"{index.label}, shifted by {by:g}",
+        f"{index.key};shifted:{by!r}",
+        index.minimum_wavelength,
+        index.maximum_wavelength,
+        lambda wavelength: index.evaluate(wavelength) + by,
+    )
+
+
 def constant(value: complex) -> RefractiveIndex:
     """Return one index for all wavelengths, relative to the medium as it stands.
 

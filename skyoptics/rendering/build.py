@@ -13,8 +13,6 @@ from functools import partial
 import numpy as np
 
 from skyoptics.camera import frame
-from skyoptics.crystals.orientations import Orientation
-from skyoptics.crystals.shapes import Shape, hexagonal_prism
 from skyoptics.droplets import sizes as sizes_of
 from skyoptics.droplets.sizes import SizeDistribution, effective_radius
 from skyoptics.droplets.spectra import read_spectrum
@@ -28,9 +26,9 @@ from skyoptics.light.sun import sun
 from skyoptics.materials import index as material
 from skyoptics.optics.bins import Bins
 from skyoptics.optics.source import Source
+from skyoptics.rendering.clouds import CrystalSheet, crystal_sheet, curtain_amount, hang, layer_amount
 from skyoptics.scene.model import Scene
 from skyoptics.scene.particles import Crystals, Drops
-from skyoptics.sky.amount import curtain, layer
 from skyoptics.sky.compose import Background
 from skyoptics.units import CELSIUS_ZERO, NM, FloatArray
 
@@ -56,7 +54,7 @@ class DropSheet:
     orders : tuple of int
         Orders p to show.
     amount : callable
-        Elevation [rad] → amount [1].
+        Elevation [rad], source → amount [1].
     method : str
         "rays", "mie", "airy" or "auto".
     sizes : SizeDistribution
@@ -71,39 +69,11 @@ class DropSheet:
     index: material.RefractiveIndex
     radius: float
     orders: tuple[int, ...]
-    amount: Callable[[FloatArray], FloatArray]
+    amount: Callable[[FloatArray, Source], FloatArray]
     method: str
     sizes: SizeDistribution
     axis_ratios: str = "round"
     canting: float = 0.0
-
-
-@dataclass(frozen=True, eq=False)
-class CrystalSheet:
-    """Crystals of one shape, how they stand and where they hang.
-
-    Parameters
-    ----------
-    name : str
-        For reports.
-    index : RefractiveIndex
-        Of the ice, relative to what it floats in.
-    shape : Shape
-        The crystal.
-    orientation : Orientation
-        Its law.
-    diameter : float
-        Across corners [m]; for absorption.
-    amount : callable
-        Elevation [rad] → amount [1].
-    """
-
-    name: str
-    index: material.RefractiveIndex
-    shape: Shape
-    orientation: Orientation
-    diameter: float
-    amount: Callable[[FloatArray], FloatArray]
 
 
 @dataclass(frozen=True, eq=False)
@@ -128,6 +98,8 @@ class Job:
         Whether all four Stokes components are wanted.
     by_moon : bool
         Whether the moon shines, at which one may look.
+    cover : float
+        Angular radius of a disc held over the source [rad].
     """
 
     bins: Bins
@@ -138,6 +110,7 @@ class Job:
     polariser: float | None = None
     stokes: bool = False
     by_moon: bool = False
+    cover: float = 0.0
 
 
 def build(scene: Scene, where: str, stokes: bool = False) -> Job:
@@ -165,6 +138,7 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
     with _blame(where, "light"):
         sources = _sources(scene, bins)
     sheets: list[DropSheet | CrystalSheet] = []
+    crystals: list[tuple[int, CrystalSheet]] = []
     for number, particles in enumerate(scene.air, start=1):
         with _blame(where, f"air.{number}"):
             index = _index(particles, scene.medium.kind)
@@ -177,10 +151,13 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
                 shape = (particles.axis_ratios, particles.canting)
                 sheets.append(DropSheet(name, index, radius, particles.orders, amount, particles.method, sizes, *shape))
             else:
-                crystal = hexagonal_prism(particles.aspect)
-                orientation = Orientation(particles.orientation, particles.tilt)
-                amount = _amount(particles, particles.optical_depth)
-                sheets.append(CrystalSheet(name, index, crystal, orientation, particles.diameter, amount))
+                crystals.append((len(sheets), crystal_sheet(particles, name, index)))
+                sheets.append(crystals[-1][1])
+    with _blame(where, "mixture"):
+        kinds = [particles for particles in scene.air if isinstance(particles, Crystals)]
+        hung = hang([sheet for _, sheet in crystals], kinds, scene.mixture)
+    for (place, _), sheet in zip(crystals, hung, strict=True):
+        sheets[place] = sheet
     with _blame(where, "camera"):
         directions = _directions(scene, sources[0])
     return Job(
@@ -192,6 +169,7 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
         scene.camera.polariser,
         stokes or scene.camera.polariser is not None,
         scene.light.body == "moon",
+        scene.camera.cover,
     )
 
 
@@ -272,10 +250,10 @@ def _depth(drops: Drops, sizes: SizeDistribution) -> float:
     return 2.0 * np.pi * float(sizes.moment(2)) * number * drops.path_m
 
 
-def _amount(particles: Drops | Crystals, optical_depth: float) -> Callable[[FloatArray], FloatArray]:
-    if particles.place == "curtain":
-        return partial(curtain, optical_depth=optical_depth, below_horizon=particles.below_horizon)
-    return partial(layer, optical_depth=optical_depth)
+def _amount(drops: Drops, optical_depth: float) -> Callable[[FloatArray, Source], FloatArray]:
+    if drops.place == "curtain":
+        return partial(curtain_amount, optical_depth=optical_depth, below_horizon=drops.below_horizon)
+    return partial(layer_amount, optical_depth=optical_depth)
 
 
 def _directions(scene: Scene, source: Source) -> Directions:

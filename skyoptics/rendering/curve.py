@@ -2,7 +2,8 @@
 
 Columns: wavelength_nm, angle_deg (bin centre), intensity (phase function, mean over the bin; mean 1 over the sphere for
 all orders together, so chosen orders keep their share; no diffraction in ray curves), polarization = (I⊥ − I∥) / (I⊥ + I∥)
-to the scattering plane, intensity_error (one standard error), index (real, at this wavelength).
+to the scattering plane, intensity_error (one standard error), index (real, at this wavelength). Crystals add two columns
+for each named halo that has light, and for "other": its own part of the intensity, and the polarization of that part.
 """
 
 from __future__ import annotations
@@ -14,7 +15,7 @@ from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager
 from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -25,8 +26,11 @@ from skyoptics.optics.axisymmetric import over_disc
 from skyoptics.optics.bins import Bins
 from skyoptics.optics.table import ScatteringTable
 from skyoptics.rendering.run import usable_cores
-from skyoptics.rendering.scatter import QUALITY, Progress, silent
+from skyoptics.rendering.scatter import ICE_INDEX, QUALITY, Progress, silent
 from skyoptics.units import CELSIUS_ZERO, DEG, NM, UM, FloatArray
+
+if TYPE_CHECKING:
+    from skyoptics.crystals.habits import Habit
 
 COLUMNS = ("wavelength_nm", "angle_deg", "intensity", "polarization", "intensity_error", "index")
 
@@ -54,7 +58,20 @@ class DropCurve:
 class CrystalCurve:
     """What is asked of the curve of randomly oriented crystals; human units, as the command line gives them."""
 
-    aspect: float = 1.0
+    shape: str = "prism"
+    aspect: float | None = None
+    pyramid_upper: float | None = None
+    pyramid_lower: float | None = None
+    trigonality: float | None = None
+    miller: tuple[int, int, int, int] = (1, 0, -1, 1)
+    face_distances: tuple[float, ...] | None = None
+    aspect_spread: float = 0.0
+    distance_spread: float = 0.0
+    diameter_um: float = 100.0
+    diffraction: bool = False
+    angle_spread_deg: float = 0.0
+    extraordinary_index: float | None = None
+    birefringence: bool = False
     wavelength_nm: tuple[float, ...] = (450.0, 550.0, 650.0)
     index: float | None = None
     medium: str = "air"
@@ -82,6 +99,8 @@ class Curve:
     table: ScatteringTable
     index: Any
     report: dict[str, Any]
+    parts: ScatteringTable | None = None
+    """The same by named halo; None for drops."""
 
 
 def drop(asked: DropCurve, progress: Progress = silent) -> Curve:
@@ -158,7 +177,7 @@ def _in_bins(table: ScatteringTable, edges: FloatArray) -> ScatteringTable:
 
 
 def crystal(asked: CrystalCurve, progress: Progress = silent) -> Curve:
-    """Return the curve of randomly oriented hexagonal prisms by ray optics.
+    """Return the curve of randomly oriented crystals by ray optics.
 
     Parameters
     ----------
@@ -172,25 +191,76 @@ def crystal(asked: CrystalCurve, progress: Progress = silent) -> Curve:
     DomainError
         If the physics refuses a value.
     """
+    from skyoptics.crystals import habits
     from skyoptics.crystals import table as tables
-    from skyoptics.crystals.shapes import hexagonal_prism
+    from skyoptics.crystals.sorting import sorter
+    from skyoptics.crystals.tracing import Imperfections
+    from skyoptics.rendering.clouds import BIREFRINGENCE, SHAPES, SHAPES_SEED
 
     bins = Bins.lines(np.array(asked.wavelength_nm) * NM)
     law = material.constant(asked.index) if asked.index is not None else material.ice(asked.medium)
+    split = 0.0
+    if asked.extraordinary_index is not None:
+        if asked.index is None or asked.birefringence:
+            raise DomainError(
+                "--extraordinary-index goes with --index, the ordinary one; for that of ice take --birefringence"
+            )
+        split = asked.extraordinary_index - asked.index
+    elif asked.birefringence:
+        if asked.index is not None:
+            raise DomainError("--birefringence is that of ice; beside --index take --extraordinary-index")
+        split, law = BIREFRINGENCE, material.shifted(law, -BIREFRINGENCE / 3.0)
+    shapes = habits.ensemble(habit(asked), SHAPES, SHAPES_SEED)
     with _threads(asked.threads) as executor:
         whole = tables.scattering_table(
-            hexagonal_prism(asked.aspect),
+            shapes,
             law,
             bins,
+            size=asked.diameter_um * UM if asked.diffraction else 0.0,
+            imperfections=Imperfections(asked.angle_spread_deg * DEG, split, asked.diffraction),
+            sorter=sorter(shapes[0].face_normals, "random", 0.0, ICE_INDEX),
             count=max(2, round(180.0 / asked.step_deg)),
             seed=asked.seed,
             relative_error=QUALITY[asked.quality],
             executor=executor,
             progress=lambda done, total: progress("tracing", done, total),
         )
-    report: dict[str, Any] = {"method": "rays", "particle": "crystal", "shape": "prism", "aspect": asked.aspect}
+    report: dict[str, Any] = {"method": "rays", "particle": "crystal", "shape": asked.shape}
+    report["crystals"] = len(shapes)
+    report["crystal"] = habits.describe(shapes[0])
     report |= {name: whole.report[name] for name in ("scattered", "straight_on", "below_cutoff", "roulette")}
-    return _curve(whole.total(), whole, law, bins, asked, report)
+    report["share_by_halo"] = dict(zip(whole.parts, whole.energy().tolist(), strict=True))
+    return _curve(whole, whole, law, bins, asked, report)
+
+
+def draw(asked: CrystalCurve, path: Path, say: Callable[[str], Any]) -> None:
+    """Draw the crystal asked for into a PNG or SVG file, and say what it is."""
+    from skyoptics.crystals import habits
+    from skyoptics.figures.crystal import draw as draw_crystal
+
+    if path.suffix.lower() not in (".png", ".svg"):
+        raise DomainError(f"a drawing is a .png or .svg file; got {path.name}")
+    kind = habit(asked)
+    shape = habits.shape(kind)
+    draw_crystal(shape, path, title=shape.label)
+    about = ", ".join(f"{name.replace('_', ' ')} {value:.6g}" for name, value in habits.describe(shape).items())
+    say(f"{path}: {shape.label}; in units of the diameter across corners: {about}")
+
+
+def habit(asked: CrystalCurve) -> Habit:
+    """Return the kind of crystal asked for."""
+    from skyoptics.crystals.habits import Habit
+
+    names = ("aspect", "pyramid_upper", "pyramid_lower", "trigonality")
+    given = {name: getattr(asked, name) for name in names if getattr(asked, name) is not None}
+    return Habit(
+        asked.shape,
+        miller=asked.miller,
+        face_distances=asked.face_distances,
+        aspect_spread=asked.aspect_spread,
+        distance_spread=asked.distance_spread,
+        **given,
+    )
 
 
 @contextmanager
@@ -215,6 +285,8 @@ def _curve(
     """Put a curve under the sun's disc where that is asked for, and finish its report."""
     if asked.disc:
         table = over_disc(table, sun_disc(bins), table.angle)
+    parts = table if isinstance(asked, CrystalCurve) else None
+    table = table.total()
     shown = table.elements[0, :, :, 0]
     for name in ("absorbed", "cut_off", "rays", "relative_error"):
         if name in whole.report:
@@ -228,22 +300,33 @@ def _curve(
         "brightest_deg": [float(table.angle[row] / DEG) for row in shown.argmax(axis=0)],
         "seed": asked.seed,
     }
-    return Curve(table, law(bins.centre).real, report)
+    return Curve(table, law(bins.centre).real, report, parts)
 
 
 def lines(curve: Curve) -> Iterator[str]:
     """Yield the curve as CSV lines, the header first."""
-    yield ",".join(COLUMNS)
+    names = () if curve.parts is None else curve.parts.parts
+    yield ",".join([*COLUMNS, *(column for name in names for column in (name, f"{name}_polarization"))])
     angle = [f"{value / DEG:.9g}" for value in curve.table.angle]
     elements = curve.table.elements[0]
     for column, wavelength in enumerate(curve.table.wavelength):
         intensity = elements[:, column, 0]
-        with np.errstate(invalid="ignore", divide="ignore"):
-            polarization = np.where(intensity > 0.0, -elements[:, column, 1] / intensity, 0.0)
+        polarization = _polarization(elements[:, column])
+        own = [] if curve.parts is None else [part[:, column] for part in curve.parts.elements]
+        more = [(part[:, 0], _polarization(part)) for part in own]
         error = curve.table.error[0, :, column]
         label, index = f"{wavelength / NM:.6g}", f"{curve.index[column]:.9g}"
         for row in range(len(angle)):
-            yield f"{label},{angle[row]},{intensity[row]:.7g},{polarization[row]:.6f},{error[row]:.3g},{index}"
+            yield (
+                f"{label},{angle[row]},{intensity[row]:.7g},{polarization[row]:.6f},{error[row]:.3g},{index}"
+                + "".join(f",{part[row]:.7g},{share[row]:.6f}" for part, share in more)
+            )
+
+
+def _polarization(elements: FloatArray) -> FloatArray:
+    """Return −P12 / P11, 0 where there is no light."""
+    with np.errstate(invalid="ignore", divide="ignore"):
+        return np.where(elements[:, 0] > 0.0, -elements[:, 1] / elements[:, 0], 0.0)
 
 
 def put_out(curve: Curve, csv: Path | None, as_json: bool, say: Callable[[str], Any]) -> None:

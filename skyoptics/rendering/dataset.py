@@ -43,7 +43,7 @@ def dataset(result: Result, attributes: Mapping[str, str]) -> xarray.Dataset:
     if job.stokes:
         degree, angle = np.empty_like(values), np.empty_like(values)
         for rows in blocks(job.directions.shape):
-            seen = stokes(job.directions, rows, job.sources, result.sheets, job.background)
+            seen = stokes(job.directions, rows, job.sources, result.sheets, job.background, job.cover)
             degree[rows] = degree_of_linear_polarisation(seen)
             angle[rows] = 0.5 * np.arctan2(seen[..., 2], seen[..., 1]) / DEG
         polarisation = {

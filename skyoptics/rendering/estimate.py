@@ -5,7 +5,8 @@ from __future__ import annotations
 from typing import Any
 
 from skyoptics.rendering import memory
-from skyoptics.rendering.build import CrystalSheet, build
+from skyoptics.rendering.build import build
+from skyoptics.rendering.clouds import CrystalSheet
 from skyoptics.rendering.expose import LEAST_ROUNDS, begin
 from skyoptics.rendering.run import Settings
 from skyoptics.rendering.scatter import is_table, least_rays, table_key

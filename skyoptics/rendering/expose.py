@@ -20,19 +20,23 @@ import numpy as np
 from skyoptics.colour.display import exposure_scale, roll_off
 from skyoptics.colour.observer import weights
 from skyoptics.crystals import guide
-from skyoptics.crystals.orientations import projected_area
-from skyoptics.crystals.tracing import Guide, Prepared, prepare, trace_plane
+from skyoptics.crystals.orientations import relative_extinction
+from skyoptics.crystals.sorting import Sorter, sorter
+from skyoptics.crystals.tracing import Guide, Prepared, coarse_shape, prepare, trace_groups, trace_plane
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.kernels import KERNEL_HASH
+from skyoptics.kernels.imperfect import TURN
+from skyoptics.kernels.lanes import CHUNK
 from skyoptics.light import spectrum
 from skyoptics.optics.batches import in_order
 from skyoptics.optics.bins import Bins
 from skyoptics.optics.source import Source
 from skyoptics.rendering import film as films
-from skyoptics.rendering.build import CrystalSheet, Job
+from skyoptics.rendering.build import Job
+from skyoptics.rendering.clouds import CrystalSheet
 from skyoptics.rendering.film import Film, FilmScatterer
 from skyoptics.rendering.interrupts import deferred
-from skyoptics.rendering.scatter import Progress, Sampling, Traced
+from skyoptics.rendering.scatter import ICE_INDEX, Progress, Sampling, Traced, crystal_identity
 from skyoptics.rendering.store import trace_key
 from skyoptics.units import Float32Array, FloatArray
 
@@ -42,6 +46,9 @@ LEAST_ROUNDS = 4
 """Rounds of every film at least, so that the scatter of batches tells the error."""
 LIT = 0.02
 """Share of films in a pixel's luminance from which it counts."""
+GROUP_CELLS = 128
+"""Cells of the coarse grid of named arcs along the longer side of a picture."""
+NO_NAME = -2
 KEEP_EVERY = 8
 """Batches of all bins, in rounds, after which a film is stored while tracing goes on."""
 
@@ -56,6 +63,11 @@ class Work:
     make: Callable[[], tuple[Prepared, ...]]
     packed: Float32Array
     seed: int
+    sorter: Sorter
+    side: int
+    """Pixels along the side of a cell of named arcs; 0 where one name's light alone is traced."""
+    only: int = -1
+    """Number of the name whose light alone is kept; -1 for all, `NO_NAME` for none."""
 
     @cached_property
     def prepared(self) -> tuple[Prepared, ...]:
@@ -71,12 +83,13 @@ class Work:
         """
         missing = list(self.film.missing(rounds))
         stokes = 4 if self.film.sums.ndim == 4 else 1
+        more = (stokes, self.side, self.only)
         tasks = (
-            (self.prepared[band], self.packed, self.seed, k, int(self.film.rays[band]), stokes) for band, k in missing
+            (self.prepared[band], self.packed, self.seed, k, int(self.film.rays[band]), *more) for band, k in missing
         )
         ahead = 2 * getattr(executor, "_max_workers", 2)
-        for (band, k), (plane, tally) in zip(missing, in_order(_batch, tasks, executor, ahead), strict=True):
-            self.film.add(band, plane, tally)
+        for (band, k), (plane, groups, tally) in zip(missing, in_order(_batch, tasks, executor, ahead), strict=True):
+            self.film.add(band, plane, tally, groups)
             progress(f"tracing {self.sheet.name}", int(self.film.counts.sum()), rounds * len(self.film.rays))
             pause()
             if band == len(self.film.rays) - 1:
@@ -84,9 +97,7 @@ class Work:
 
     def scatterer(self) -> FilmScatterer:
         """Return the film as a scatterer."""
-        area = partial(projected_area, self.sheet.shape, self.sheet.orientation)
-        reference = self.sheet.shape.mean_projected_area
-        return FilmScatterer(self.film, lambda cosine: area(cosine) / reference)
+        return FilmScatterer(self.film, partial(relative_extinction, self.sheet.shapes, self.sheet.orientation))
 
     def summary(self, rays_before: int) -> Traced:
         """Return how the film's light was come by."""
@@ -100,19 +111,26 @@ class Work:
         return Traced(self.sheet.name, self.film.key, rays_before > 0, total - rays_before, total, about)
 
 
-def rays_by_bin(bins: Bins, pixels: int) -> Any:
+def rays_by_bin(bins: Bins, pixels: int, multiple: int = 256) -> Any:
     """Return the rays of one batch of each bin, shape (nλ,): a figure of the scene, never of a clock.
 
     A batch grows with the picture, from 2¹⁴ to 2²⁰ rays, so that filling planes stays a small part of the work; bins that
-    the eye hardly sees under the sun get fewer, down to an eighth.
+    the eye hardly sees under the sun get fewer, down to an eighth; numbers are multiples of `multiple`.
     """
     seen = weights(bins).sum(axis=1) * spectrum.irradiance(bins)
     share = np.clip(seen / seen.max(), 0.125, 1.0) if seen.max() > 0.0 else np.ones(len(bins))
     batch = 1 << int(np.clip(ceil(np.log2(max(pixels, 1) / 6.0)), 14, 20))
-    return (np.maximum(np.round(batch * share / 256.0), 1) * 256).astype(np.int64)
+    return (np.maximum(np.round(batch * share / multiple), 1) * multiple).astype(np.int64)
 
 
-def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None, copy: int = 0) -> Work:
+def begin(
+    sheet: CrystalSheet,
+    job: Job,
+    seed: int,
+    source: Source | None = None,
+    copy: int = 0,
+    only: str | None = None,
+) -> Work:
     """Return the film of a sheet of crystals, from the store where it is there, and what its batches need.
 
     Parameters
@@ -127,15 +145,18 @@ def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None
         What lights them; default the first of the job.
     copy : int, optional
         Number of the sheet among sheets of the same crystals, which need rays of their own.
+    only : str, optional
+        Name of the arc whose light alone is wanted, with the random numbers of the whole; "other" for what has no name.
     """
     source, bins, grid = source or job.sources[0], job.bins, job.directions
     packed = grid.packed()
-    rays = rays_by_bin(bins, grid.shape[0] * grid.shape[1])
+    multiple = max(256, len(sheet.shapes) * (2 * TURN if sheet.imperfections.birefringence else CHUNK))
+    rays = rays_by_bin(bins, grid.shape[0] * grid.shape[1], multiple)
+    arcs = sorter_of(sheet, source)
+    side = -(-max(grid.shape) // GROUP_CELLS)
     particles: dict[str, Any] = {
-        "shape": sheet.shape.packed_slabs(),
-        "orientation": [sheet.orientation.name, 0.0 if sheet.orientation.name == "random" else sheet.orientation.tilt],
+        **crystal_identity(sheet),
         "index": sheet.index.key,
-        "diameter": sheet.diameter,
         "source": source.direction,
         "seed": seed,
         "copy": copy,
@@ -149,6 +170,7 @@ def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None
         bins=bins.edges,
         rays=rays,
         kernels=KERNEL_HASH,
+        names=[*arcs.names, side, only],
         **particles,
     )
     # films of different crystals draw different random numbers; a polariser or another frame does not change them
@@ -159,7 +181,7 @@ def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None
 
     def ready(row: int, edges: FloatArray, found: Guide | None = None) -> Prepared:
         return prepare(
-            sheet.shape,
+            sheet.shapes,
             sheet.orientation,
             sheet.index,
             edges,
@@ -170,6 +192,8 @@ def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None
             size=sheet.diameter,
             spectral_bin=row,
             guide=found,
+            imperfections=sheet.imperfections,
+            sorter=arcs,
         )
 
     def all_bins() -> tuple[Prepared, ...]:
@@ -177,8 +201,20 @@ def begin(sheet: CrystalSheet, job: Job, seed: int, source: Source | None = None
         found = guide.learn(ready(len(bins) // 2, span), packed, stream)
         return tuple(ready(row, edges, found) for row, edges in enumerate(bins.edges))
 
-    blank = Film.blank(key, rays, reference, (*grid.shape, 4) if job.stokes else grid.shape)
-    return Work(sheet, source, films.find(blank), all_bins, packed, stream)
+    shape = (*grid.shape, 4) if job.stokes else grid.shape
+    if only is None:
+        blank = Film.blank(key, rays, reference, shape, arcs.names, coarse_shape(grid.shape, side))
+        return Work(sheet, source, films.find(blank), all_bins, packed, stream, arcs, side)
+    number = arcs.names.index(only) if only in arcs.names else NO_NAME
+    found = films.find(Film.blank(key, rays, reference, shape))
+    return Work(sheet, source, found, all_bins, packed, stream, arcs, 0, number)
+
+
+def sorter_of(sheet: CrystalSheet, source: Source) -> Sorter:
+    """Return what tells the named arcs of a sheet under a source apart."""
+    elevation = float(np.arcsin(np.clip(source.direction[2], -1.0, 1.0)))
+    orientation = sheet.orientation
+    return sorter(sheet.shapes[0].face_normals, orientation.name, elevation, ICE_INDEX, orientation.spread)
 
 
 def trace(
@@ -232,6 +268,17 @@ def trace(
         for work in works:
             if work.film.counts.sum() > work.film.reused:
                 films.keep(work.film)
+
+
+def follow(work: Work, rounds: int, executor: Executor | None, progress: Progress) -> None:
+    """Bring one film to a number of rounds and keep it; nothing is traced for a name the sheet has no light of."""
+    if work.only == NO_NAME:
+        return
+    try:
+        _run([work], [rounds], executor, progress)
+    finally:
+        if work.film.counts.sum() > work.film.reused:
+            films.keep(work.film)
 
 
 def _run(works: Sequence[Work], wanted: Sequence[int], executor: Executor | None, progress: Progress) -> None:
@@ -291,7 +338,10 @@ def lightness_error(
     for work in works:
         ratio = scale * float((eye * work.source.irradiance).sum() / work.film.reference.sum())
         amount = np.divide(
-            work.sheet.amount(np.nan_to_num(elevation)) * ratio, solid, out=np.zeros_like(solid), where=solid > 0.0
+            work.sheet.amount(np.nan_to_num(elevation), work.source) * ratio,
+            solid,
+            out=np.zeros_like(solid),
+            where=solid > 0.0,
         )
         light, variance = work.film.statistics()
         films_light += amount * light
@@ -309,8 +359,12 @@ def _lightness(level: FloatArray) -> FloatArray:
 
 
 def _batch(
-    prepared: Prepared, packed: Float32Array, seed: int, k: int, rays: int, stokes: int
-) -> tuple[Float32Array, dict[str, float]]:
-    plane, tally = trace_plane(prepared, packed, seed, k, rays, stokes)
+    prepared: Prepared, packed: Float32Array, seed: int, k: int, rays: int, stokes: int, side: int, only: int
+) -> tuple[Float32Array, Any, dict[str, float]]:
+    groups = None
+    if side:
+        plane, groups, tally = trace_groups(prepared, packed, seed, k, rays, side, stokes)
+    else:
+        plane, tally = trace_plane(prepared, packed, seed, k, rays, stokes, only=only)
     names = ("incident", "scattered", "absorbed", "roulette", "below_cutoff", "segments")
-    return plane, {name: float(getattr(tally, name)) for name in names}
+    return plane, groups, {name: float(getattr(tally, name)) for name in names}

@@ -29,7 +29,7 @@ from skyoptics.rendering.store import find_arrays, make_room
 from skyoptics.rendering.store import folder as store_folder
 from skyoptics.units import Float32Array, FloatArray
 
-FORMAT = 2
+FORMAT = 3
 MOST_STORED = 8e9
 """Films are kept up to this size together [byte]; the ones not used for longest go first."""
 
@@ -54,6 +54,10 @@ class Film:
         Batches in the sums.
     tally : dict
         Sums of what became of the rays.
+    names : tuple of str
+        Named arcs told apart; empty for none.
+    groups : ndarray, shape (nλ, names, rows, columns), or None
+        Power of all batches by name, in cells of the coarse grid.
     reused : int
         Batches that were found in the store.
     """
@@ -65,12 +69,22 @@ class Film:
     squares: FloatArray
     counts: Any
     tally: dict[str, float] = field(default_factory=dict)
+    names: tuple[str, ...] = ()
+    groups: FloatArray | None = None
     reused: int = 0
     whole: bool = True
     """False while a batch is half added."""
 
     @classmethod
-    def blank(cls, key: str, rays: Any, reference: FloatArray, shape: tuple[int, ...]) -> Film:
+    def blank(
+        cls,
+        key: str,
+        rays: Any,
+        reference: FloatArray,
+        shape: tuple[int, ...],
+        names: tuple[str, ...] = (),
+        cells: tuple[int, int] = (0, 0),
+    ) -> Film:
         """Return a film without light."""
         bands = len(rays)
         return cls(
@@ -80,14 +94,18 @@ class Film:
             np.zeros((bands, *shape), dtype=np.float32),
             np.zeros(shape[:2]),
             np.zeros(bands, dtype=np.int64),
+            names=names,
+            groups=np.zeros((bands, len(names), *cells)) if names else None,
         )
 
-    def add(self, band: int, plane: Float32Array, tally: dict[str, float]) -> None:
+    def add(self, band: int, plane: Float32Array, tally: dict[str, float], groups: Any = None) -> None:
         """Add the next batch of a bin."""
         self.whole = False
         weight = float(self.reference[band] / (2.0 * self.rays[band]))
         stride = self.sums[band].size // self.squares.size
         add_plane(self.sums[band].reshape(-1), self.squares.reshape(-1), plane.reshape(-1), weight, stride)
+        if self.groups is not None:
+            self.groups[band] += groups
         self.counts[band] += 1
         for name, value in tally.items():
             self.tally[name] = self.tally.get(name, 0.0) + value
@@ -185,6 +203,8 @@ def find(blank: Film) -> Film:
         arrays["squares"],
         counts,
         dict(about["tally"]),
+        names=blank.names,
+        groups=arrays["groups"] if blank.names else None,
         reused=int(counts.sum()),
     )
 
@@ -201,7 +221,10 @@ def keep(film: Film) -> bool:
             return True
         about = {"key": film.key, "format": FORMAT, "tally": film.tally, "batches": int(film.counts.sum())}
         with aside.open("wb") as file:
-            np.savez(file, about=np.array(json.dumps(about)), sums=film.sums, squares=film.squares, counts=film.counts)
+            arrays = {"sums": film.sums, "squares": film.squares, "counts": film.counts}
+            if film.groups is not None:
+                arrays["groups"] = film.groups
+            np.savez(file, about=np.array(json.dumps(about)), **arrays)
         aside.replace(path)
         make_room(path, MOST_STORED)
     except OSError:

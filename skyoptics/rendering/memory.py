@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 from skyoptics.errors import ResourceError
-from skyoptics.rendering.build import CrystalSheet, DropSheet, Job
+from skyoptics.rendering.build import DropSheet, Job
+from skyoptics.rendering.clouds import CrystalSheet
+from skyoptics.rendering.expose import GROUP_CELLS
 from skyoptics.rendering.scatter import is_table
 
 SHARE = 0.7
@@ -14,11 +16,13 @@ _PROGRAM = 220e6
 """Interpreter, libraries and compiled kernels [byte], measured."""
 _FLAT_TABLE = 250e6
 """One table of flattened drops while it is made [byte], measured with the default bins."""
+_NAMES = 20
+"""Named arcs that crystals of one law may make, and a reserve."""
 _TABLE = 60e6
 """One stored table and its average over the disc [byte], measured with the default bins."""
 
 
-def predict(job: Job, threads: int, data: bool) -> int:
+def predict(job: Job, threads: int, data: bool, only: bool = False) -> int:
     """Return the largest memory that a render will hold [byte].
 
     Parameters
@@ -29,6 +33,8 @@ def predict(job: Job, threads: int, data: bool) -> int:
         Blocks and batches in work at once.
     data : bool
         Whether the radiance of the whole picture is kept (float32), with its directions (float64).
+    only : bool
+        Whether the light of one named arc is traced beside the whole.
     """
     rows, columns = job.directions.shape
     pixels, bands = rows * columns, len(job.bins)
@@ -37,7 +43,9 @@ def predict(job: Job, threads: int, data: bool) -> int:
     radiance = pixels * (4 * bands + 2 * 8) if data else 0
     blocks = threads * max(BLOCK, columns) * bands * 8 * 4
     components = 4 if job.stokes else 1
-    planes = films * len(job.sources) * pixels * (4 * bands * components + 8)
+    planes = films * len(job.sources) * pixels * (4 * bands * components + 8) * (2 if only else 1)
+    cells = min(pixels, GROUP_CELLS**2)
+    planes += films * len(job.sources) * cells * 8 * bands * _NAMES
     blocks *= components
     noise = pixels * 8 * 17 if films else 0
     flying = 3 * threads * pixels * 4 * components if films else 0

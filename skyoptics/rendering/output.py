@@ -58,6 +58,8 @@ class Wanted:
         Of `EXTRA`.
     noise_map : bool
         Whether to write a picture of the error of displayed lightness.
+    labels : bool
+        Whether to write an annotated copy.
     """
 
     folder: Path
@@ -65,6 +67,7 @@ class Wanted:
     data: bool = False
     extra: Sequence[str] = ()
     noise_map: bool = False
+    labels: bool = False
 
     def path(self, ending: str) -> Path:
         """Return the path of one file."""
@@ -73,7 +76,11 @@ class Wanted:
     def paths(self) -> list[Path]:
         """Return the files that `write` will make, the picture first."""
         endings = ["png", "json", *(["nc"] if self.data else []), *self.extra]
-        return [self.path(ending) for ending in endings] + ([self.path("noise.png")] if self.noise_map else [])
+        if self.noise_map:
+            endings.append("noise.png")
+        if self.labels:
+            endings.append("labels.png")
+        return [self.path(ending) for ending in endings]
 
     @property
     def preview_path(self) -> Path:
@@ -140,6 +147,10 @@ def write(result: Result, scene: Scene, wanted: Wanted, command: Sequence[str]) 
         images.write_tiff(wanted.path("tiff"), linear_rgb(result.xyz), text=entries)
     if wanted.noise_map:
         images.write_png(wanted.path("noise.png"), noise_picture(result), text=entries)
+    if wanted.labels:
+        from skyoptics.rendering.labels import labelled
+
+        images.write_png(wanted.path("labels.png"), labelled(result), encoded=True, text=entries)
     report = result.report | {"command": entries["Command"], "files": [path.name for path in files]}
     with images.replacing(wanted.path("json")) as aside:
         aside.write_text(json.dumps(report, indent=2, ensure_ascii=False) + "\n", encoding="utf-8")

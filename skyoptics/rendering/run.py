@@ -9,7 +9,7 @@ import time
 from collections.abc import Callable, Iterator
 from concurrent.futures import Executor, ProcessPoolExecutor, ThreadPoolExecutor
 from contextlib import contextmanager
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
@@ -18,13 +18,28 @@ import skyoptics
 from skyoptics.camera.frame import polariser
 from skyoptics.colour.develop import Developed, develop
 from skyoptics.colour.observer import weights
-from skyoptics.rendering import expose, flat, memory
+from skyoptics.crystals.arcs import feature
+from skyoptics.errors import DomainError
+from skyoptics.optics.source import Source
+from skyoptics.rendering import expose, flat, further, memory
 from skyoptics.rendering.build import DropSheet, Job, build
 from skyoptics.rendering.caption import cautions, what_to_look_for
-from skyoptics.rendering.scatter import Progress, Sampling, Traced, axisymmetric, find_table, is_table, silent
+from skyoptics.rendering.clouds import CrystalSheet
+from skyoptics.rendering.named import FURTHER, OTHER, Parted
+from skyoptics.rendering.scatter import (
+    Progress,
+    Sampling,
+    Traced,
+    axisymmetric,
+    crystal_identity,
+    find_table,
+    is_table,
+    silent,
+)
+from skyoptics.rendering.store import trace_key
 from skyoptics.scene.digest import scene_hash
 from skyoptics.scene.model import Scene
-from skyoptics.sky.compose import Scatterer, Sheet, radiance
+from skyoptics.sky.compose import Background, Scatterer, Sheet, radiance
 from skyoptics.units import Float32Array, FloatArray
 
 
@@ -76,6 +91,8 @@ class Result:
         What was asked, done and reached; JSON types.
     noise : ndarray or None, shape (ny, nx)
         One standard error of the displayed lightness [1]; None where nothing was traced onto the picture itself.
+    parted : list of Parted
+        Light of the crystals by named arc.
     """
 
     job: Job
@@ -84,6 +101,7 @@ class Result:
     developed: Developed
     report: dict[str, Any]
     noise: FloatArray | None = None
+    parted: list[Parted] = field(default_factory=list)
 
 
 def usable_cores() -> int:
@@ -127,7 +145,7 @@ def look(
 
     def work(rows: slice) -> FloatArray:
         axis = None if job.polariser is None else polariser(job.directions, job.polariser, rows)
-        return radiance(job.directions, rows, job.sources, sheets, job.background, axis)
+        return radiance(job.directions, rows, job.sources, sheets, job.background, axis, job.cover)
 
     parts = list(blocks(shape))
     if executor is None:
@@ -153,6 +171,7 @@ def render(
     data: bool = False,
     preview: Callable[[Developed], None] | None = None,
     stokes: bool = False,
+    only: str | None = None,
 ) -> Result:
     """Render a scene.
 
@@ -172,6 +191,9 @@ def render(
         Given a developed picture after the first round of a long job.
     stokes : bool
         Whether polarisation will be asked for; a film then holds four times as much.
+    only : str, optional
+        Name of the arc whose light alone is shown, without background, at the exposure of the whole picture and from the
+        same rays; "other" for all light that has no name. The whole picture is traced first, or taken from the store.
 
     Returns
     -------
@@ -185,13 +207,15 @@ def render(
         If it would take too much memory.
     """
     start = time.perf_counter()
+    if only is not None:
+        told_apart(only)
     job = build(scene, where, stokes)
-    memory.check(memory.predict(job, settings.threads, data))
+    memory.check(memory.predict(job, settings.threads, data, only is not None))
     picture = scene.picture
     white = job.sources[0].irradiance @ weights(job.bins, picture.observer) if picture.white == "light" else None
     with ThreadPoolExecutor(settings.threads) as threads, _tracers(settings, threads) as tracers:
         try:
-            sheets, traced, works = _scatter(job, settings.sampling, tracers, progress)
+            sheets, traced, works, parted = _scatter(job, settings.sampling, tracers, progress)
             before = [work.film.traced_rays for work in works]
 
             def now() -> tuple[Float32Array, Developed]:
@@ -216,16 +240,29 @@ def render(
             if xyz is None or developed is None:
                 xyz = tristimulus(job, sheets, picture.observer, threads, progress)
                 developed = develop(xyz, picture.exposure_ev, white)
+            if only is not None:
+                sheets = _only(only, job, settings.sampling, sheets, parted, tracers, progress)
+                job = replace(job, background=Background(0.0, 0.0))
+                xyz = tristimulus(job, sheets, picture.observer, threads, progress)
+                developed = replace(develop(xyz, developed.exposure_ev, white), automatic=developed.automatic)
+                noise = None
         except BaseException:
             threads.shutdown(wait=True, cancel_futures=True)
             raise
     traced += [work.summary(rays) for work, rays in zip(works, before, strict=True)]
     about = report(scene, where, settings, job, traced, developed, xyz)
+    if only is not None:
+        about["only"] = only
+        about["look_for"] = (
+            f"the light of {OTHER} paths alone"
+            if only == OTHER
+            else f"the light of one feature alone: {feature(only).title}"
+        )
     if works:
         about["lightness_error"] = float(np.sqrt(sum(part**2 for part in parts)))
         about["lightness_error_target"] = settings.sampling.target if settings.rays is None else None
     about["seconds"] = {"trace": round(traced_at - start, 3), "look": round(time.perf_counter() - traced_at, 3)}
-    return Result(job, sheets, xyz, developed, about, noise)
+    return Result(job, sheets, xyz, developed, about, noise, parted)
 
 
 @contextmanager
@@ -245,12 +282,62 @@ def _tracers(settings: Settings, threads: Executor) -> Iterator[Executor]:
             raise
 
 
+def told_apart(name: str) -> None:
+    """Make sure that a name is one whose light is kept apart.
+
+    Raises
+    ------
+    DomainError
+        With the nearest name, or why it is not.
+    """
+    if name in (OTHER, FURTHER):
+        return
+    if feature(name).scatterings > 1:
+        raise DomainError(f"{name} is made by light that met two crystals: ask for {FURTHER}, all such light together")
+
+
+def _only(
+    only: str,
+    job: Job,
+    sampling: Sampling,
+    sheets: list[Sheet],
+    parted: list[Parted],
+    executor: Executor,
+    progress: Progress,
+) -> list[Sheet]:
+    """Return sheets with the light of one name alone, traced as far as the whole was."""
+    result = [sheet for sheet in sheets if sheet.name == FURTHER and only == FURTHER]
+    for sheet, described in zip(
+        sheets, job.sheets, strict=False
+    ):  # further scatterings come last, without a description
+        own = [part for part in parted if part.sheet is described]
+        if not own:
+            if only == OTHER:
+                result.append(sheet)
+            continue
+        scatterers: list[Scatterer] = []
+        for part in own:
+            if only not in part.names:
+                scatterers = []
+                break
+            if part.work is None:
+                scatterers.append(part.scatterer([only]))
+                continue
+            work = expose.begin(part.sheet, job, sampling.seed, part.source, part.copy, only)
+            expose.follow(work, part.work.film.rounds, executor, progress)
+            scatterers.append(work.scatterer())
+        if scatterers:
+            result.append(Sheet(sheet.name, tuple(scatterers), sheet.amount))
+    return result
+
+
 def _scatter(
     job: Job, sampling: Sampling, executor: Executor, progress: Progress
-) -> tuple[list[Sheet], list[Traced], list[expose.Work]]:
-    """Return the sheets, how their tables were come by, and the films that are still to be traced."""
+) -> tuple[list[Sheet], list[Traced], list[expose.Work], list[Parted]]:
+    """Return the sheets, how their tables were come by, the films that are still to be traced, and light by name."""
     sheets, traced, works = [], [], []
-    seen: list[tuple[Any, ...]] = []
+    parted: list[Parted] = []
+    seen: list[str] = []
     scatterers: tuple[Scatterer, ...]
     for sheet in job.sheets:
         if is_table(sheet):
@@ -258,19 +345,34 @@ def _scatter(
             first = axisymmetric(sheet, table, job.sources[0].disc)
             scatterers = tuple(first for _ in job.sources)  # a mirror image has the same disc
             traced.append(how)
+            if isinstance(sheet, CrystalSheet):
+                parted += [Parted(sheet, source, table=table) for source in job.sources]
         elif isinstance(sheet, DropSheet):
             found = [flat.find(sheet, job, source, sampling, executor, progress) for source in job.sources]
             scatterers = tuple(scatterer for scatterer, _ in found)
             traced += [how for _, how in found]
         else:
-            alike = (sheet.shape.packed_slabs().tobytes(), sheet.orientation, sheet.index.key, sheet.diameter)
+            alike = trace_key(index=sheet.index.key, **crystal_identity(sheet))
             copy = seen.count(alike)
             seen.append(alike)
             films = [expose.begin(sheet, job, sampling.seed, source, copy) for source in job.sources]
             scatterers = tuple(work.scatterer() for work in films)
             works += films
+            parted += [
+                Parted(sheet, source, work=work, copy=copy) for source, work in zip(job.sources, films, strict=True)
+            ]
         sheets.append(Sheet(sheet.name, scatterers, sheet.amount))
-    return sheets, traced, works
+    slab = further.slab_of(job)
+    if slab:
+        lights = [further.find(slab, job, source, sampling, executor, progress) for source in job.sources]
+        traced += [how for _, how in lights]
+        sheets.append(Sheet(FURTHER, tuple(light for light, _ in lights), whole_amount))
+    return sheets, traced, works, parted
+
+
+def whole_amount(elevation: FloatArray, source: Source) -> FloatArray:
+    """Return 1: the amount of light that comes with its amount in it."""
+    return np.ones(np.shape(elevation))
 
 
 def tristimulus(

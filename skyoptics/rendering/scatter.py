@@ -9,6 +9,7 @@ from typing import Any, Protocol
 
 import numpy as np
 
+from skyoptics.crystals.arcs import names as arc_names
 from skyoptics.droplets.sizes import Single
 from skyoptics.kernels import KERNEL_HASH
 from skyoptics.optics.axisymmetric import Axisymmetric, over_disc
@@ -16,11 +17,14 @@ from skyoptics.optics.bins import Bins
 from skyoptics.optics.source import Disc
 from skyoptics.optics.table import ScatteringTable
 from skyoptics.rendering import store
-from skyoptics.rendering.build import CrystalSheet, DropSheet, Job
+from skyoptics.rendering.build import DropSheet, Job
+from skyoptics.rendering.clouds import CrystalSheet
 
 QUALITY = {"draft": 0.02, "normal": 0.01, "fine": 0.005}
 """Noise target by the name of the quality: light-weighted relative standard error of a table's bins, and rms error of the
 displayed lightness of a picture with films."""
+ICE_INDEX = 1.31
+"""Index by which light of the same faces is shared out among names."""
 CRYSTAL_ANGLES = 3600
 """Angle bins of a table of randomly oriented crystals that a picture reads."""
 
@@ -116,10 +120,20 @@ def table_key(sheet: DropSheet | CrystalSheet, job: Job, sampling: Sampling) -> 
     return store.trace_key(
         kind="random crystals",
         count=CRYSTAL_ANGLES,
-        diameter=sheet.diameter,
-        shape=sheet.shape.packed_slabs(),
+        names=list(arc_names()),
+        **crystal_identity(sheet),
         **shared,
     )
+
+
+def crystal_identity(sheet: CrystalSheet) -> dict[str, Any]:
+    """Return what tells kinds of crystals apart, for keys."""
+    return {
+        "diameter": sheet.diameter,
+        "shape": np.concatenate([shape.packed_slabs() for shape in sheet.shapes]),
+        "orientation": sheet.orientation.key,
+        "imperfections": sheet.imperfections.key,
+    }
 
 
 def plain_rays(sheet: DropSheet) -> bool:
@@ -228,8 +242,12 @@ def _trace_table(
         shared |= {"relative_error": 1e-5, "max_batches": max(least, ceil(sampling.rays / (batch * len(job.bins))))}
     if isinstance(sheet, DropSheet):
         return geometric.scattering_table(sheet.index, sheet.radius, job.bins, **shared)
+    from skyoptics.crystals.sorting import sorter
+
+    shared["sorter"] = sorter(sheet.shapes[0].face_normals, "random", 0.0, ICE_INDEX)  # circles: whatever the sun
+    shared["imperfections"] = sheet.imperfections
     return table.scattering_table(
-        sheet.shape, sheet.index, job.bins, size=sheet.diameter, count=CRYSTAL_ANGLES, **shared
+        sheet.shapes, sheet.index, job.bins, size=sheet.diameter, count=CRYSTAL_ANGLES, **shared
     )
 
 

@@ -174,6 +174,15 @@ class Camera(Table):
         note("What the picture's centre looks at: the sun, the point opposite it, or a direction"),
     ] = "antisolar"
 
+    cover_deg: Annotated[
+        float, number(0, 20, "degrees", "Angular radius of a small dark disc held over the sun or moon; 0 for none")
+    ] = 0.0
+
+    @property
+    def cover(self) -> float:
+        """Angular radius of the disc over the source [rad]."""
+        return self.cover_deg * DEG
+
     @property
     def polariser(self) -> float | None:
         """Axis of the polariser [rad]; None for none."""
@@ -309,6 +318,21 @@ class Picture(Table):
             yield "bin_nm", "cannot stand beside wavelengths_nm; keep one of the two"
 
 
+class Mixture(Table):
+    """A cloud of several kinds of crystals, those with a share of their own."""
+
+    optical_depth: Annotated[
+        float, number(0, 50, "", "Optical depth at 550 nm of all of them together, as of one kind")
+    ] = 0.1
+    by: Annotated[
+        Literal["number", "cross-section", "optical-depth"],
+        note(
+            "What the shares count: crystals; their cross-section, mean over all orientations; or the vertical optical depth "
+            "with the crystals as they stand"
+        ),
+    ] = "number"
+
+
 class Scene(Table):
     """A whole scene: what lights it, what floats in the air, who looks, what comes out."""
 
@@ -323,5 +347,6 @@ class Scene(Table):
             min_length=1, max_length=100, description="What floats in the air, one [[air]] table per kind of particle"
         ),
     ]
+    mixture: Annotated[Mixture | None, note("The cloud of those [[air]] tables that have a share")] = None
     camera: Annotated[Camera, note("Who looks")] = Camera()
     picture: Annotated[Picture, note("What comes out")] = Picture()

@@ -35,6 +35,13 @@ Place = Annotated[
     Literal["curtain", "layer"],
     note("A curtain has the same optical depth in every direction of view, a layer is a level sheet overhead"),
 ]
+CrystalPlace = Annotated[
+    Literal["curtain", "layer", "slab"],
+    note(
+        "A curtain has the same optical depth in every direction of view, a layer is a thin level sheet, a slab is a level "
+        "sheet that weakens the light on its way through; all tables with a slab float in one"
+    ),
+]
 BelowHorizon = Annotated[bool, note("Whether a curtain goes on below the horizon")]
 
 
@@ -166,36 +173,116 @@ class Drops(Particles):
             )
 
 
+_Miller = Annotated[int, Field(ge=-9, le=9)]
+_Factor = Annotated[float, Field(ge=0.05, le=20)]
+
+
 class Crystals(Particles):
-    """Hexagonal ice prisms, all of one shape."""
+    """Ice crystals of one kind of shape."""
 
     NAME: ClassVar[str] = "crystals"
 
     kind: Annotated[Literal["crystals"], note("Kind of particle")]
+    shape: Annotated[
+        Literal["prism", "bipyramid", "truncated-bipyramid", "pyramid", "trigonal"],
+        note(
+            "Hexagonal prism; two pyramids base to base; the same cut off by basal faces, with a prism between; a prism with a "
+            "pyramid on its upper end; a prism of triangular cross-section"
+        ),
+    ] = "prism"
     aspect: Annotated[
-        float, number(0.01, 100, "", "Length along the c-axis divided by the diameter across corners; below 1 a plate")
-    ] = 1.0
-    diameter_um: Annotated[float, number(10, 10000, "µm", "Diameter across corners; matters for absorption alone")] = (
-        100.0
+        float | None,
+        number(
+            0.01,
+            100,
+            "",
+            "Length of the prism part along the c-axis divided by the diameter across corners; below 1 a plate; left out, "
+            "that of a typical crystal of the shape; not for a bipyramid",
+            default=1.0,
+        ),
+    ] = None
+    pyramid_upper: Annotated[
+        float | None, number(0, 1, "", "Height of the upper pyramid divided by that of a pointed one", above=True)
+    ] = None
+    pyramid_lower: Annotated[
+        float | None, number(0, 1, "", "Height of the lower pyramid divided by that of a pointed one", above=True)
+    ] = None
+    trigonality: Annotated[
+        float | None, number(0, 1, "", "Of a trigonal prism: 0 a regular hexagon, 1 a triangle", default=1.0)
+    ] = None
+    miller: Annotated[
+        tuple[_Miller, _Miller, _Miller, _Miller],
+        Strict(False),
+        note("Miller index of the pyramid faces, {h 0 -h l} or {h h -2h l}"),
+    ] = (1, 0, -1, 1)
+    face_distances: Annotated[
+        tuple[_Factor, _Factor, _Factor, _Factor, _Factor, _Factor] | None,
+        Strict(False),
+        note("Six factors on the distances of the side faces from the c-axis; left out, a regular hexagon"),
+    ] = None
+    aspect_spread: Annotated[float, number(0, 1, "", "Standard deviation of the logarithm of the aspect")] = 0.0
+    distance_spread: Annotated[
+        float, number(0, 0.5, "", "Relative standard deviation of the distances of the faces")
+    ] = 0.0
+    diameter_um: Annotated[
+        float, number(10, 10000, "µm", "Diameter across corners; matters for absorption and diffraction alone")
+    ] = 100.0
+    diffraction: Annotated[bool, note("Whether diffraction by the crystals spreads the light")] = False
+    angle_spread_deg: Annotated[float, number(0, 5, "degrees", "Standard deviation of the angle between two faces")] = (
+        0.0
     )
+    birefringence: Annotated[bool, note("Whether the two indices of ice are told apart by polarisation")] = False
     orientation: Annotated[
-        Literal["random", "plate", "column", "parry"],
+        Literal["random", "plate", "column", "parry", "lowitz", "axis"],
         note(
             "How they stand: any way, c-axis near the vertical (plate), c-axis near the horizontal with free spin "
-            "(column), the same with two opposite side faces near the horizontal (parry)"
+            "(column), the same with two opposite side faces near the horizontal (parry), a diagonal across the c-axis near "
+            "the horizontal with free spin (lowitz), an axis of your own with free spin"
         ),
     ] = "random"
+    axis_polar_deg: Annotated[
+        float, number(0, 180, "degrees", 'With orientation = "axis": angle of the spin axis to the c-axis')
+    ] = 0.0
+    axis_azimuth_deg: Annotated[
+        float,
+        number(
+            -360, 360, "degrees", 'With orientation = "axis": its azimuth in the crystal, from a side face\'s normal'
+        ),
+    ] = 0.0
+    axis_inclination_deg: Annotated[
+        float, number(0, 180, "degrees", 'With orientation = "axis": angle of the spin axis to the vertical')
+    ] = 0.0
     tilt_deg: Annotated[
         float,
         number(
             0, 90, "degrees", "Standard deviation of each of the two components of tilt; not for random orientation"
         ),
     ] = 1.0
+    tilt_law: Annotated[
+        Literal["gaussian", "cone", "table"],
+        note("How tilts are spread: Gaussian, evenly within a cone of tilt_deg, or by tilt_table"),
+    ] = "gaussian"
+    tilt_table: Annotated[
+        str | None,
+        text(1000, "CSV file of the number of crystals by tilt, its path counted from the scene file"),
+        AfterValidator(_beside_scene),
+    ] = None
+    share: Annotated[
+        float | None, number(0, 1e12, "", "Share in the cloud of [mixture], instead of an optical depth of its own")
+    ] = None
+    seen_from: Annotated[
+        Literal["below", "above"],
+        note("Whether a layer or slab hangs over the observer, or lies under one who looks down on it from the air"),
+    ] = "below"
+    scatterings: Annotated[
+        Literal[1, 2, "all"],
+        note('With place = "slab": whether light is followed to one crystal, to two, or to the end'),
+    ] = 1
     index: Annotated[
         float | None, number(1.0001, 2, "", "Refractive index, one for all wavelengths, instead of that of ice")
     ] = None
     index_table: IndexTable = None
-    place: Place = "layer"
+    place: CrystalPlace = "layer"
     below_horizon: BelowHorizon = False
 
     @property
@@ -208,18 +295,59 @@ class Crystals(Particles):
         """Tilt spread [rad]."""
         return self.tilt_deg * DEG
 
+    @property
+    def angle_spread(self) -> float:
+        """Spread of interfacial angles [rad]."""
+        return self.angle_spread_deg * DEG
+
+    @property
+    def axis(self) -> tuple[float, float]:
+        """Polar angle and azimuth of the spin axis in the crystal [rad]."""
+        return self.axis_polar_deg * DEG, self.axis_azimuth_deg * DEG
+
+    @property
+    def axis_inclination(self) -> float:
+        """Angle of the spin axis to the vertical [rad]."""
+        return self.axis_inclination_deg * DEG
+
     @classmethod
     def conflicts(cls, values: Mapping[str, Any]) -> Iterator[Conflict]:
-        """Yield conflicts between index and index_table, and between below_horizon and place."""
+        """Yield keys that another key leaves without meaning."""
         yield from _shared_conflicts(values)
+        shape = values.get("shape", "prism")
+        if shape == "bipyramid" and values.get("aspect") is not None:
+            yield "aspect", "a bipyramid has none, its faces fix it; leave it out or take a truncated-bipyramid"
+        for key, shapes in (
+            ("pyramid_upper", ("truncated-bipyramid", "pyramid")),
+            ("pyramid_lower", ("truncated-bipyramid",)),
+            ("trigonality", ("trigonal",)),
+        ):
+            if values.get(key) is not None and shape not in shapes:
+                yield key, f"is for shape = {' or '.join(shapes)}; got shape = {shape!r}"
+        if values.get("birefringence") is True and (
+            values.get("index") is not None or values.get("index_table") is not None
+        ):
+            yield "birefringence", "tells the two indices of ice apart; leave index and index_table out"
+        orientation = values.get("orientation", "random")
+        given = [key for key in ("axis_polar_deg", "axis_azimuth_deg", "axis_inclination_deg") if values.get(key)]
+        if given and orientation != "axis":
+            yield given[0], f'is for orientation = "axis"; got orientation = {orientation!r}'
+        if values.get("tilt_law") == "table" and "tilt_table" in values and values["tilt_table"] is None:
+            yield "tilt_table", 'is missing; tilt_law = "table" needs a CSV file'
+        if values.get("tilt_table") is not None and values.get("tilt_law", "table") != "table":
+            yield "tilt_table", 'is for tilt_law = "table"'
+        if values.get("seen_from", "below") != "below" and values.get("place") == "curtain":
+            yield "seen_from", "a curtain hangs all around; leave this out or take a layer or a slab"
+        if values.get("scatterings", 1) != 1 and values.get("place", "slab") != "slab":
+            yield "scatterings", 'further scatterings are for place = "slab"'
 
 
 def _shared_conflicts(values: Mapping[str, Any]) -> Iterator[Conflict]:
     """Yield what goes wrong between the keys that drops and crystals share."""
     if values.get("index") is not None and values.get("index_table") is not None:
         yield "index_table", "cannot stand beside index; keep one of the two"
-    if values.get("below_horizon") is True and values.get("place") == "layer":
-        yield "below_horizon", 'a layer ends at the horizon; leave this out or set place = "curtain"'
+    if values.get("below_horizon") is True and values.get("place") in ("layer", "slab"):
+        yield "below_horizon", f'a {values["place"]} ends at the horizon; leave this out or set place = "curtain"'
 
 
 class _ByKind:

@@ -14,13 +14,17 @@ from typing import Protocol
 
 import numpy as np
 
-from skyoptics.geometry.axes import azimuth_elevation
+from skyoptics.geometry.axes import angle_between, azimuth_elevation
 from skyoptics.geometry.directions import Directions
 from skyoptics.optics.source import Source
 from skyoptics.units import FloatArray
 
 THIN = 0.2
 """Amount up to which single scattering is within about a tenth."""
+
+
+COVER_LIGHT = 0.02
+"""Light from the dark side of a disc held over the sun ÷ that of the sky behind it."""
 
 
 class Scatterer(Protocol):
@@ -44,12 +48,13 @@ class Sheet:
     scatterers : tuple of Scatterer
         What they do to the light of each source.
     amount : callable
-        Elevation of the line of sight [rad] → path integral of the reference extinction [1].
+        Elevation of the line of sight [rad] and source → path integral of the reference extinction [1], weighted by what
+        gets through where the particles weaken the light themselves.
     """
 
     name: str
     scatterers: tuple[Scatterer, ...]
-    amount: Callable[[FloatArray], FloatArray]
+    amount: Callable[[FloatArray, Source], FloatArray]
 
 
 @dataclass(frozen=True)
@@ -72,6 +77,7 @@ def radiance(
     sheets: Sequence[Sheet],
     background: Background,
     polariser: FloatArray | None = None,
+    cover: float = 0.0,
 ) -> FloatArray:
     """Return the spectral radiance of some rows of a grid.
 
@@ -87,6 +93,8 @@ def radiance(
         What lies behind, unpolarised.
     polariser : ndarray, shape (ny, nx), optional
         Position angle of the axis of an ideal linear polariser in front of each direction's light [rad].
+    cover : float, optional
+        Angular radius of a dark disc held over the first source [rad]; 0 for none.
 
     Returns
     -------
@@ -97,8 +105,8 @@ def radiance(
     behind = background.at(elevation)
     total = np.repeat((behind if polariser is None else 0.5 * behind)[..., None], len(sources[0].irradiance), axis=-1)
     for sheet in sheets:
-        amount = sheet.amount(elevation)[..., None]
         for source, scatterer in zip(sources, sheet.scatterers, strict=True):
+            amount = sheet.amount(elevation, source)[..., None]
             if polariser is None:
                 light = scatterer.phase(source, directions, rows)
             else:
@@ -108,18 +116,34 @@ def radiance(
             light *= source.irradiance
             light *= amount
             total += light
+    if cover > 0.0:
+        total *= _seen_past(directions, rows, sources[0], cover)[..., None]
     return total
 
 
+def _seen_past(directions: Directions, rows: slice, source: Source, cover: float) -> FloatArray:
+    """Return the share of light seen past a disc over a source, shape (ny, nx); its edge is as wide as a pixel."""
+    away = angle_between(source.direction, directions.vectors(rows))
+    width = np.maximum(directions.pixel_size(rows), 1e-9)
+    return COVER_LIGHT + (1.0 - COVER_LIGHT) * np.clip((away - cover) / width + 0.5, 0.0, 1.0)
+
+
 def stokes(
-    directions: Directions, rows: slice, sources: Sequence[Source], sheets: Sequence[Sheet], background: Background
+    directions: Directions,
+    rows: slice,
+    sources: Sequence[Source],
+    sheets: Sequence[Sheet],
+    background: Background,
+    cover: float = 0.0,
 ) -> FloatArray:
     """Return the Stokes vector of radiance, shape (ny, nx, nλ, 4), in each direction's meridian frame."""
     _, elevation = azimuth_elevation(directions.vectors(rows))
     total = np.zeros((*elevation.shape, len(sources[0].irradiance), 4))
     total[..., 0] = background.at(elevation)[..., None]
     for sheet in sheets:
-        amount = sheet.amount(elevation)[..., None, None]
         for source, scatterer in zip(sources, sheet.scatterers, strict=True):
+            amount = sheet.amount(elevation, source)[..., None, None]
             total += scatterer.phase(source, directions, rows, stokes=True) * source.irradiance[:, None] * amount
+    if cover > 0.0:
+        total *= _seen_past(directions, rows, sources[0], cover)[..., None, None]
     return total

@@ -11,7 +11,8 @@ from skyoptics.crystals import arcs
 from skyoptics.crystals.arc_data import TABLE
 from skyoptics.crystals.arc_feature import KINDS, PARTS
 from skyoptics.crystals.arc_groups import LAWS, candidates
-from skyoptics.crystals.arc_regions import tangent_join
+from skyoptics.crystals.arc_regions import circle_radius, tangent_join
+from skyoptics.crystals.faces import face_normal
 from skyoptics.crystals.passage import FREE_ANGLES
 from skyoptics.errors import DomainError
 from skyoptics.units import DEG
@@ -188,6 +189,27 @@ def test_features_exist_up_to_their_limits(name: str, inside: float, outside: fl
     assert locus(name, outside)[0].shape == locus(name, outside)[1].shape == (0,)
 
 
+@pytest.mark.parametrize("name", [name for name in arcs.names() if "plate_arc" in name])
+def test_plate_arcs_touch_their_circle_where_light_passes_symmetrically(name: str) -> None:
+    # before and after, light makes half the deviation with the bisector of the faces, towards and away from the base of the
+    # wedge (Snell's law with equal angles); 0.09° is the step of a locus
+    touched = False
+    for sequence in arcs.feature(name).crystals[0].sequences:
+        first, last = face_normal(sequence[0]), face_normal(sequence[1])
+        half = 0.5 * circle_radius(sequence, N)
+        along, across = last - first, last + first
+        along, across = along / np.linalg.norm(along), across / np.linalg.norm(across)
+        sun_deg = np.arcsin(-np.cos(half) * along[2] - np.sin(half) * across[2]) / DEG
+        if sun_deg < 0.0:
+            continue
+        sun = np.array([0.0, np.cos(sun_deg * DEG), np.sin(sun_deg * DEG)])
+        nearest = np.nanmin(np.arccos(vectors(name, sun_deg) @ sun))
+        assert abs(nearest - 2.0 * half) < 0.01 * DEG
+        assert f"h = {sun_deg:.3g}°" in arcs.feature(name).where
+        touched = True
+    assert touched == (name not in ("upper_plate_arc_20", "upper_plate_arc_35"))
+
+
 def test_tangent_arcs_touch_the_22_halo_above_and_below_the_sun() -> None:
     radius = (2.0 * np.arcsin(N / 2.0) - np.pi / 3.0) / DEG
     for name, sign in (("upper_tangent", 1.0), ("lower_tangent", -1.0)):
@@ -323,6 +345,12 @@ def test_sequences_find_their_names() -> None:
     assert candidates("parry", (6, 8)) == ()
     assert candidates("lowitz", (8, 4)) == ("middle_lowitz",)
     assert candidates("random", (18, 22 + 4)) == ("halo_18",)
+    for faces, radius in (((7, 1), 46), ((1, 7), 46), ((26, 3), 9), ((27, 1), 23), ((2, 15), 23), ((17, 3), 24)):
+        assert candidates("random", faces) == (f"halo_{radius}",)  # a wedge is one either way
+    assert candidates("plate", (17, 14)) == ("upper_plate_arc_20",)
+    assert candidates("plate", (24, 27)) == ("lower_plate_arc_20",)
+    assert candidates("column", (24, 27)) == candidates("column", (17, 14)) == ("column_arc_20",)
+    assert candidates("column", (2, 15)) == candidates("column", (27, 1)) == ("column_arc_23",)
     assert candidates("random", (7, 4)) == ()
     assert candidates("random", (0, 4)) == ()
     with pytest.raises(DomainError, match="did you mean plate"):

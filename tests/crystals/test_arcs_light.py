@@ -19,11 +19,26 @@ from skyoptics.units import DEG
 
 N = 1.31
 HITS = 9
-# outward normals by number: 1, 2 basal, 3 … 8 around
-LABELS = np.array([1, 2, 3, 4, 5, 6, 7, 8])
-NORMALS = np.array(
-    [[0, 0, 1.0], [0, 0, -1.0]] + [[np.cos(k * np.pi / 3), np.sin(k * np.pi / 3), 0.0] for k in range(6)]
-)
+RISE = np.arctan(np.sqrt(3.0) / 2.0 / 1.629)
+"""Of the normals of {10-11} faces above the basal plane, c/a = 1.629."""
+
+
+def ring(rise: float) -> list[list[float]]:
+    turn = np.arange(6) * np.pi / 3
+    return [[np.cos(rise) * np.cos(a), np.cos(rise) * np.sin(a), np.sin(rise)] for a in turn]
+
+
+def body(shape: str, aspect: float) -> tuple[np.ndarray, np.ndarray, np.ndarray, float]:
+    """Return numbers of faces (1, 2 basal, 3 … 8 around, 13 … upper and 23 … lower pyramid), outward normals, distances, reach."""
+    side, half = np.sqrt(3.0) / 4.0, aspect / 2.0
+    labels, normals = [1, 2, 3, 4, 5, 6, 7, 8], [[0, 0, 1.0], [0, 0, -1.0], *ring(0.0)]
+    if shape == "prism":
+        return np.array(labels), np.array(normals), np.array([half] * 2 + [side] * 6), np.hypot(half, 0.5)
+    top = half + 0.5 * side / np.tan(RISE)  # pyramids cut off at half their height
+    slant = np.cos(RISE) * side + np.sin(RISE) * half
+    labels += [*range(13, 19), *range(23, 29)]
+    distance = np.array([top] * 2 + [side] * 6 + [slant] * 12)
+    return np.array(labels), np.array(normals + ring(RISE) + ring(-RISE)), distance, np.hypot(top, 0.5)
 
 
 def poses(law: str, count: int, tilt_deg: float, generator: np.random.Generator) -> Rotation:
@@ -43,45 +58,44 @@ def poses(law: str, count: int, tilt_deg: float, generator: np.random.Generator)
 
 @lru_cache(maxsize=4)
 def follow(
-    law: str, aspect: float, sun_deg: float, tilt_deg: float, count: int
+    law: str, shape: str, aspect: float, sun_deg: float, tilt_deg: float, count: int
 ) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     """Return faces met (m, HITS; 0 beyond the exit), views (m, 3) and powers (m,) of every exit."""
     generator = np.random.default_rng([7, int(sun_deg * 10), int(aspect * 10)])
     pose = poses(law, count, tilt_deg, generator)
     sun = np.array([0.0, np.cos(sun_deg * DEG), np.sin(sun_deg * DEG)])
     travel = pose.inv().apply(-sun)
-    distance = np.concatenate([[aspect / 2.0] * 2, [np.sqrt(3.0) / 4.0] * 6])
-    reach = np.hypot(aspect / 2.0, 0.5)
+    labels, normals, distance, reach = body(shape, aspect)
     across = np.cross(travel, np.where(np.abs(travel[:, :1]) < 0.7, [[1.0, 0, 0]], [[0, 1.0, 0]]))
     across /= np.linalg.norm(across, axis=1, keepdims=True)
     radius, turn = reach * np.sqrt(generator.random(count)), generator.uniform(0.0, 2.0 * np.pi, count)
     place = (radius * np.cos(turn))[:, None] * across + (radius * np.sin(turn))[:, None] * np.cross(travel, across)
     place = place - 3.0 * reach * travel
-    speed = travel @ NORMALS.T
+    speed = travel @ normals.T
     with np.errstate(divide="ignore"):
-        time = (distance - place @ NORMALS.T) / speed
+        time = (distance - place @ normals.T) / speed
     enter = np.where(speed < 0.0, time, -np.inf)
     hit = enter.max(axis=1) < np.where(speed > 0.0, time, np.inf).min(axis=1)
     face = enter.argmax(axis=1)[hit]
     travel, pose_hit = travel[hit], pose[hit]
     place = place[hit] + enter.max(axis=1)[hit, None] * travel
     faces = np.zeros((len(face), HITS), dtype=int)
-    faces[:, 0] = LABELS[face]
-    normal = NORMALS[face]
+    faces[:, 0] = labels[face]
+    normal = normals[face]
     cosine = -np.sum(travel * normal, axis=1)
     share, inner = fresnel(cosine, N)
     found = [(faces.copy(), -pose_hit.apply(travel + 2.0 * cosine[:, None] * normal), share)]
     power = 1.0 - share
     travel = (travel + (cosine - N * inner)[:, None] * normal) / N
     for step in range(1, HITS):
-        speed = travel @ NORMALS.T
-        gap = np.maximum(distance - place @ NORMALS.T, 0.0)
+        speed = travel @ normals.T
+        gap = np.maximum(distance - place @ normals.T, 0.0)
         with np.errstate(divide="ignore", invalid="ignore"):
             time = np.where(speed > 1e-9, gap / speed, np.inf)
         face = time.argmin(axis=1)
         place = place + time.min(axis=1)[:, None] * travel
-        faces[:, step] = LABELS[face]
-        normal = NORMALS[face]
+        faces[:, step] = labels[face]
+        normal = normals[face]
         cosine = np.sum(travel * normal, axis=1)
         share, outer = fresnel(cosine, 1.0 / N)
         leaves = share < 1.0
@@ -104,8 +118,8 @@ def fresnel(cosine: np.ndarray, index: float) -> tuple[np.ndarray, np.ndarray]:
 def own_light(name: str, sun_deg: float, count: int, tilt_deg: float = 0.1) -> tuple[np.ndarray, np.ndarray]:
     """Return views and powers of a feature's light in its typical crystals."""
     crystals = arcs.feature(name).crystals[0]
-    met, view, power = follow(crystals.law, crystals.aspect, sun_deg, tilt_deg, count)
-    _, first, inverse = np.unique(met @ 9 ** np.arange(HITS), return_index=True, return_inverse=True)
+    met, view, power = follow(crystals.law, crystals.shape, crystals.aspect, sun_deg, tilt_deg, count)
+    _, first, inverse = np.unique(met @ 29 ** np.arange(HITS), return_index=True, return_inverse=True)
     mine = np.array([name in candidates(crystals.law, [int(face) for face in met[i] if face]) for i in first])
     which = mine[inverse]
     view, power = view[which], power[which]
@@ -167,6 +181,18 @@ HEIGHTS = {
     "upper_lowitz": (5, 15, 35),
     "middle_lowitz": (5, 15, 35),
     "lower_lowitz": (5, 15, 35),
+    "plate_arc_18": (15, 40, 70),
+    "upper_plate_arc_9": (5, 20, 45),
+    "lower_plate_arc_9": (5, 20, 60),
+    "upper_plate_arc_20": (3, 8, 15),
+    "lower_plate_arc_20": (5, 20, 50),
+    "upper_plate_arc_23": (35, 50, 65),
+    "lower_plate_arc_23": (60, 70, 80),
+    "upper_plate_arc_24": (5, 20, 40),
+    "lower_plate_arc_24": (5, 20, 65),
+    "upper_plate_arc_35": (3, 5, 8),
+    "lower_plate_arc_35": (5, 20, 50),
+    "column_arc_23": (5, 15, 35),
 }
 LINES = [name for name in arcs.names() if arcs.feature(name).kind in ("curve", "fold")]
 FAST = {
@@ -183,11 +209,16 @@ FAST = {
     "lower_lowitz": 15,
     "heliac": 5,
     "subhelic": 15,
+    "plate_arc_18": 40,
+    "lower_plate_arc_23": 65,
+    "upper_plate_arc_24": 15,
+    "column_arc_20": 15,
 }
 
 
 def check_line(name: str, sun_deg: float, count: int) -> None:
     entry = arcs.feature(name)
+    count = count if entry.crystals[0].shape == "prism" else count // 3  # more paths, each to be named
     # a fold of light that a basal face mirrored is twice as wide at the same tilt, and its crest stands 0.1° inside
     tilt = 0.0 if name == "wegener" else 0.1
     view, power = own_light(name, sun_deg, count, tilt)
@@ -262,11 +293,20 @@ def test_the_pillar_holds_what_tilted_plates_mirror(sun_deg: float) -> None:
         ("supralateral", 50),
         ("upper_sunvex_parry", 50),
         ("lower_suncave_parry", 5),
+        ("plate_arc_18", 2.5),
+        ("upper_plate_arc_9", 57),
+        ("upper_plate_arc_20", 23),
+        ("upper_plate_arc_23", 17),
+        ("lower_plate_arc_23", 45),
+        ("upper_plate_arc_24", 53),
+        ("upper_plate_arc_35", 16),
+        ("column_arc_23", 73),
     ],
 )
 def test_no_light_where_a_feature_does_not_exist(name: str, sun_deg: float) -> None:
     assert not arcs.exists(name, sun_deg * DEG, N)
-    _, power = own_light(name, sun_deg, 60_000)
     crystals = arcs.feature(name).crystals[0]
-    everything = follow(crystals.law, crystals.aspect, sun_deg, 0.1, 60_000)[2].sum()
+    count = 60_000 if crystals.shape == "prism" else 20_000
+    _, power = own_light(name, sun_deg, count)
+    everything = follow(crystals.law, crystals.shape, crystals.aspect, sun_deg, 0.1, count)[2].sum()
     assert power.sum() < 1e-5 * everything

@@ -14,7 +14,8 @@ from skyoptics.geometry.axes import direction
 from skyoptics.geometry.directions import Directions
 from skyoptics.kernels import entry, sobol
 from skyoptics.kernels import lanes as L
-from skyoptics.kernels.orient import orient_chunk, source_chunk
+from skyoptics.kernels.crystal import INVERSE_KAPPA, RADIUS, SCALE, SPAN
+from skyoptics.kernels.orient import orient_chunk, polarise_chunk, source_chunk
 from skyoptics.kernels.random import batch_key
 from skyoptics.optics.polarisation import between_meridians
 from skyoptics.units import DEG
@@ -119,7 +120,7 @@ def test_index_below_one_is_refused():
 def lanes(law, count=2**15, radius=0.0, darkening=None, aspect=0.6, elevation_deg=25.0):
     """Return rotations, directions before, entry points and faces of many rays."""
     item = prepared(aspect, law, elevation_deg, radius=radius, darkening=darkening)
-    _, patches, scale, number, inverse_kappa, span, frame, size, disc, table, stokes, _ = item.arguments
+    (_, patches), (settings, number, pose, tilts, frame, disc, table, stokes, *_) = item.bodies[0], item.arguments
     state, codes = L.new_lanes()
     points = np.zeros(sobol.DIMENSIONS * L.CHUNK, np.float32)
     seeds = np.zeros(sobol.DIMENSIONS, np.uint32)
@@ -130,9 +131,10 @@ def lanes(law, count=2**15, radius=0.0, darkening=None, aspect=0.6, elevation_de
     faces = []
     for ray in range(0, count, L.CHUNK):
         sobol.sobol_chunk(ray, True, seeds, item.used, sobol.REVERSED_NUMBERS, sobol.CHUNK_TABLE, points)
-        source_chunk(state, points, frame, size, disc, table)
-        orient_chunk(state, points, number, inverse_kappa, span)
-        entry.enter_chunk(state, codes, ray, points, patches, sums, scale, stokes, frame[:3])
+        source_chunk(state, points, frame, settings[RADIUS], disc, table)
+        orient_chunk(state, points, number, settings[INVERSE_KAPPA], settings[SPAN], pose, tilts)
+        polarise_chunk(state, stokes, frame[:3])
+        entry.enter_chunk(state, codes, ray, points, patches, sums, settings[SCALE])
         found.append(np.stack([state[row : row + L.CHUNK] for row in wanted], axis=1).astype(float))
         faces.append(codes[L.PATH_LOW : L.PATH_LOW + L.CHUNK].astype(int) - 1)
     values = np.concatenate(found)

@@ -13,7 +13,8 @@ from skyoptics.crystals.tracing import prepare
 from skyoptics.geometry.axes import direction
 from skyoptics.kernels import entry, polyhedron, sobol
 from skyoptics.kernels import lanes as L
-from skyoptics.kernels.orient import orient_chunk, source_chunk
+from skyoptics.kernels.crystal import INVERSE_KAPPA, RADIUS, SCALE, SPAN
+from skyoptics.kernels.orient import orient_chunk, polarise_chunk, source_chunk
 from skyoptics.kernels.random import batch_key
 from skyoptics.optics import interface as fresnel
 
@@ -31,16 +32,20 @@ def born(shape, stokes=(1.0, 0.0, 0.0, 0.0), index=INDEX, size=0.0):
         stokes=stokes,
         size=size,
     )
-    slabs, patches, scale, law, inverse_kappa, span, frame, radius, disc, table, incident, _ = prepared.arguments
+    (slabs, patches), (settings, law, pose, tilts, frame, disc, table, incident, *_) = (
+        prepared.bodies[0],
+        prepared.arguments,
+    )
     state, codes = L.new_lanes()
     points = np.zeros(sobol.DIMENSIONS * L.CHUNK, np.float32)
     seeds = np.zeros(sobol.DIMENSIONS, np.uint32)
     sums = np.zeros((len(patches) // entry.PATCH + 1) * L.CHUNK, np.float32)
     sobol.scramble_seeds(*batch_key(11, 0, 0), seeds)
     sobol.sobol_chunk(0, True, seeds, prepared.used, sobol.REVERSED_NUMBERS, sobol.CHUNK_TABLE, points)
-    source_chunk(state, points, frame, radius, disc, table)
-    orient_chunk(state, points, law, inverse_kappa, span)
-    entry.enter_chunk(state, codes, 0, points, patches, sums, scale, incident, frame[:3])
+    source_chunk(state, points, frame, settings[RADIUS], disc, table)
+    orient_chunk(state, points, law, settings[INVERSE_KAPPA], settings[SPAN], pose, tilts)
+    polarise_chunk(state, incident, frame[:3])
+    entry.enter_chunk(state, codes, 0, points, patches, sums, settings[SCALE])
     return state, codes, slabs, frame
 
 
@@ -214,7 +219,7 @@ f4, u4 = np.zeros(9, np.float32), np.zeros(9, np.uint32)
 types = dict(
     interface="(float32[::1], int64)",
     advance="(float32[::1], int64, float32[::1])",
-    enter_chunk="(float32[::1], uint32[::1], int64, float32[::1], float32[::1], float32[::1], float32, float32[::1], float32[::1])",
+    enter_chunk="(float32[::1], uint32[::1], int64, float32[::1], float32[::1], float32[::1], float32)",
 )
 p.{kernel}.compile(types["{kernel}"])
 print("".join(p.{kernel}.inspect_asm().values()))

@@ -1,0 +1,1 @@
+"""Pictures about pictures: labels on a render, drawings of crystals and rays."""

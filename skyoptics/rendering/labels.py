@@ -1,0 +1,109 @@
+"""An annotated copy of a render: arcs named where their own light is to be seen."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from skyoptics.camera import overlay
+from skyoptics.colour.display import encode
+from skyoptics.crystals.arcs import feature
+from skyoptics.figures.annotated import Annotated, annotate
+from skyoptics.figures.placement import Label
+from skyoptics.geometry.axes import azimuth_elevation
+from skyoptics.rendering.expose import GROUP_CELLS
+from skyoptics.rendering.named import FURTHER, OTHER, binned, own_light
+from skyoptics.rendering.run import Result
+from skyoptics.units import FloatArray
+
+SEEN = 0.03
+"""Contrast of an arc at its best, against its own surroundings, from which it is named."""
+DIFFUSE_SEEN = 0.1
+"""Share of diffuse light in the luminance from which it is named."""
+AROUND = 5
+"""Cells to each side that are an arc's surroundings."""
+ANCHORS = 300
+"""Candidate points of an arc, the strongest ones."""
+_TITLES = {FURTHER: "light scattered twice and more"}
+
+
+def arc_labels(result: Result) -> list[Label]:
+    """Return the names of the arcs that are seen in a picture, the strongest first.
+
+    An arc is seen where its own light stands out from its surroundings: by how much its share of the luminance exceeds the
+    mean within `AROUND` cells. Diffuse light counts whole.
+    """
+    from scipy.ndimage import uniform_filter
+
+    job = result.job
+    side = -(-max(job.directions.shape) // GROUP_CELLS)
+    solid = binned(job.directions.solid_angle(), side)
+    flux = binned(result.xyz[..., 1].astype(np.float64) * job.directions.solid_angle(), side)
+    luminance = np.divide(flux, solid, out=np.zeros_like(flux), where=solid > 0.0)
+    _, elevation = azimuth_elevation(job.directions.vectors())
+    above = binned((elevation >= 0.0).astype(np.float64), side)
+    below = binned((elevation < 0.0).astype(np.float64), side)
+    whole = np.maximum(above, below) == side**2  # cells on the rim of the image or on the horizon mislead
+    luminance = np.where(whole, luminance, 0.0)
+    near = uniform_filter((luminance > 0.0).astype(np.float64), 2 * AROUND + 1)
+    found: list[tuple[float, Label]] = []
+    for name, light in own_light(job, result.parted, side).items():
+        if name == OTHER:
+            continue
+        diffuse = name == FURTHER or feature(name).kind == "diffuse"
+        share = np.divide(light, luminance, out=np.zeros_like(light), where=luminance > 0.0)
+        if not diffuse:
+            mean = np.divide(uniform_filter(share, 2 * AROUND + 1), near, out=np.zeros_like(share), where=near > 0.0)
+            share = np.maximum(share - mean, 0.0)
+        share = np.minimum(_steady(share), 1.0)
+        if share.max(initial=0.0) < (DIFFUSE_SEEN if diffuse else SEEN):
+            continue
+        text = _TITLES.get(name) or feature(name).title
+        strength = share * np.sqrt(light / light.max())  # the dot goes where the arc is bright
+        found.append((_weight(share), Label(text[:1].upper() + text[1:], _anchors(strength, side))))
+    return [label for _, label in sorted(found, key=lambda pair: -pair[0])]
+
+
+def labelled(result: Result) -> FloatArray | Any:
+    """Return a labelled copy of a picture, display-encoded, 0 to 1, shape (ny, nx, 3)."""
+    return annotated(result).rgb / 255.0
+
+
+def annotated(result: Result) -> Annotated:
+    """Return a labelled copy of a picture and what became of the labels."""
+    grid, source = result.job.directions, result.job.sources[0].direction
+    return annotate(
+        encode(result.developed.rgb),
+        arc_labels(result),
+        horizon=overlay.horizon(grid),
+        compass=overlay.compass(grid),
+        sun=overlay.mark(grid, source),
+        antisolar=overlay.mark(grid, -source),
+        scale=overlay.angle_scale(grid),
+        title=result.report["title"],
+        source_name="Moon" if result.job.by_moon else "Sun",
+    )
+
+
+def _steady(share: FloatArray) -> FloatArray:
+    """Return shares as a median over each cell and its neighbours: a single noisy cell is no arc."""
+    padded = np.pad(share, 1, mode="edge")
+    rows, columns = share.shape
+    near = [padded[i : i + rows, j : j + columns] for i in range(3) for j in range(3)]
+    middle: FloatArray = np.median(np.array(near), axis=0)
+    return np.where(share > 0.5, share, np.maximum(middle, np.minimum(share, 2.0 * middle)))
+
+
+def _weight(share: FloatArray) -> float:
+    """Return how important an arc is: its greatest share, and more where it is long."""
+    return float(share.max() + 0.2 * np.log1p((share > SEEN).sum()))
+
+
+def _anchors(share: FloatArray, side: int) -> FloatArray:
+    """Return the strongest cells as (column, row, strength) in pixels."""
+    best = np.argsort(share, axis=None)[::-1][:ANCHORS]
+    best = best[share.ravel()[best] > 0.0]
+    row, column = np.unravel_index(best, share.shape)
+    middle = 0.5 * (side - 1)
+    return np.stack([column * side + middle, row * side + middle, share.ravel()[best]], axis=1)
