@@ -9,9 +9,12 @@ import numpy as np
 from PIL import Image
 
 import skyoptics
+from skyoptics.scene.load import load
 
 ROOT = Path(__file__).parents[2]
 WIDTH = 900
+LABELLED = {"mixed-whole-sky": 2000, "pyramid-display": None, "over-the-ice-fog": None}
+"""Scenes of which a labelled copy is kept too, and the width they are rendered at [pixel]."""
 
 
 def main(names: list[str]) -> None:
@@ -20,11 +23,20 @@ def main(names: list[str]) -> None:
     folder.mkdir(exist_ok=True)
     for name in names or sorted(path.stem for path in (ROOT / "scenes").glob("*.toml")):
         start = time.perf_counter()
-        picture = skyoptics.render(skyoptics.load(ROOT / "scenes" / f"{name}.toml"), seed=1)
-        image = Image.fromarray(iio.imread(picture._repr_png_()))
-        height = round(image.height * WIDTH / image.width)
-        iio.imwrite(folder / f"{name}.png", np.asarray(image.resize((WIDTH, height), Image.Resampling.LANCZOS)))
+        width = LABELLED.get(name)
+        scene = load(ROOT / "scenes" / f"{name}.toml", () if width is None else (f"camera.width_px={width}",))
+        picture = skyoptics.render(scene, seed=1)
+        keep(iio.imread(picture._repr_png_()), folder / f"{name}.png")
+        if name in LABELLED:
+            keep(picture.labelled(), folder / f"{name}.labels.png")
         print(f"{name}: {time.perf_counter() - start:.0f} s, EV {picture.report['exposure_ev']:g}", flush=True)
+
+
+def keep(pixels: np.ndarray, path: Path) -> None:
+    """Write a small copy."""
+    image = Image.fromarray(pixels)
+    height = round(image.height * WIDTH / image.width)
+    iio.imwrite(path, np.asarray(image.resize((WIDTH, height), Image.Resampling.LANCZOS)))
 
 
 if __name__ == "__main__":

@@ -293,7 +293,8 @@ def read_tilts(path: str | Path) -> tuple[tuple[float, float], ...]:
                     raise DataFileError(f"{path}: row {number} needs two numbers, got {','.join(row)!r}") from None
                 rows.append((tilt * DEG, count))
     except (OSError, UnicodeDecodeError) as error:
-        raise DataFileError(f"cannot read the table of tilts {path}: {error}") from error
+        reason = getattr(error, "strerror", None) or "it is not UTF-8 text"
+        raise DataFileError(f"cannot read the table of tilts {path}: {reason.lower()}") from error
     try:
         _check_tilts(tuple(rows))
     except DomainError as error:

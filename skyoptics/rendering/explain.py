@@ -19,11 +19,12 @@ from skyoptics.crystals.arcs import feature
 from skyoptics.crystals.faces import face_labels
 from skyoptics.crystals.tracing import ExitList, trace_exits
 from skyoptics.geometry.axes import angle_between, azimuth_elevation, direction
+from skyoptics.geometry.directions import Directions
 from skyoptics.kernels.lanes import path_faces
 from skyoptics.optics.batches import in_order
-from skyoptics.rendering import expose
+from skyoptics.rendering import expose, further
 from skyoptics.rendering.build import DropSheet, Job, build
-from skyoptics.rendering.named import OTHER, Parted
+from skyoptics.rendering.named import FURTHER, OTHER, Parted
 from skyoptics.rendering.run import Settings
 from skyoptics.rendering.scatter import Progress, axisymmetric, find_table, is_table, silent
 from skyoptics.scene.model import Scene
@@ -100,6 +101,11 @@ def explain(
                 else:
                     work = expose.begin(sheet, job, settings.seed, source)
                     found += _arrived(work, job, light, settings, executor, progress)
+        slab = further.slab_of(job)
+        for source in job.sources if slab else ():
+            scatterer, _ = further.find(slab, whole_sky(job), source, settings.sampling, executor, progress, side=1)
+            light = weights(job.bins)[:, 1] * source.irradiance
+            found.append(_entry(FURTHER, "crystals of the slab", float(scatterer.phase(source, spot)[0, 0] @ light)))
     background = job.background.at(elevation)[0, 0] * float(weights(job.bins)[:, 1].sum())
     found.append(_entry("background", "", float(background)))
     total = sum(entry["luminance"] for entry in found)
@@ -114,13 +120,23 @@ def explain(
     }
 
 
+def whole_sky(job: Job) -> Job:
+    """Return a job that looks at the whole sky in cells of 2°, onto which further scatterings are traced."""
+    grid = Directions.cylindrical((90, 180), np.eye(3), (-np.pi, np.pi), (np.pi / 2.0, -np.pi / 2.0))
+    return replace(job, directions=grid)
+
+
 def _entry(arc: str, particles: str, luminance: float, error: float = 0.0, paths: Any = ()) -> dict[str, Any]:
     return {"arc": arc, "particles": particles, "luminance": luminance, "error": error, "paths": list(paths)}
 
 
 def _share(entry: dict[str, Any], total: float) -> dict[str, Any]:
     arc = entry["arc"]
-    plain = {OTHER: "light of no named arc", "background": "background"}
+    plain = {
+        OTHER: "light of no named arc",
+        "background": "background",
+        FURTHER: "light that met two crystals or more",
+    }
     return {
         "arc": arc,
         "title": plain.get(arc) or feature(arc).title,

@@ -78,6 +78,12 @@ class Picture:
         """Return the viewing directions of the pixels, shape (ny, nx, 3), east, north, up."""
         return self._result.job.directions.vectors()
 
+    def labelled(self) -> Any:
+        """Return a labelled copy: arcs by name, horizon, compass, scale; uint8, shape (ny, nx, 3)."""
+        from skyoptics.rendering.labels import annotated
+
+        return annotated(self._result).rgb
+
     def save(self, folder: str | os.PathLike[str], data: bool = False) -> Path:
         """Write picture and report into a folder.
 
@@ -122,7 +128,12 @@ def load(path: str | os.PathLike[str]) -> Scene:
 
 
 def render(
-    scene: Scene, quality: str = "normal", seed: int = 1, threads: int | None = None, rays: int | None = None
+    scene: Scene,
+    quality: str = "normal",
+    seed: int = 1,
+    threads: int | None = None,
+    rays: int | None = None,
+    only: str | None = None,
 ) -> Picture:
     """Render a scene.
 
@@ -138,6 +149,8 @@ def render(
         Worker threads; default all cores. The picture does not depend on it.
     rays : int, optional
         Rays of each kind of particle; overrides the quality.
+    only : str, optional
+        Name of a halo arc (`skyoptics.crystals.arcs.names`) whose light alone is shown.
 
     Returns
     -------
@@ -146,7 +159,7 @@ def render(
     Raises
     ------
     DomainError
-        If the quality is unknown.
+        If the quality or the arc is unknown.
     SceneError, ResourceError
         If the physics refuses a value, or memory is short.
     """
@@ -154,4 +167,4 @@ def render(
         raise DomainError(f"no quality {quality!r}; there are {', '.join(QUALITY)}{nearest(quality, QUALITY)}")
     name = safe_name(scene.title or "scene")
     settings = Settings(quality, seed, threads or usable_cores(), rays=rays)
-    return Picture(scene, run(scene, name, settings), name)
+    return Picture(scene, run(scene, name, settings, only=only), name)

@@ -48,7 +48,7 @@ class FurtherScatterer:
     light : ndarray, shape (nλ, cy, cx) or (nλ, cy, cx, 4)
         Radiance ÷ irradiance [sr⁻¹], 0 where `known` is false.
     known : ndarray of bool, shape (cy, cx)
-        Cells that lie whole on the side of the horizon where the layer is seen.
+        Cells that lie whole on the side of the horizon where the layer is seen, and those next to them.
     above : bool
         Whether the layer is looked down on.
     """
@@ -165,7 +165,10 @@ def find(
         arrays, about = found
         light = arrays["light"]
         about = {name: about[name] for name in ("left_inside", "unscattered", "by_order", "rays", "sun_cosine")}
-    scatterer = FurtherScatterer(grid, light, known(grid, slab[0].above), slab[0].above)
+    from scipy.ndimage import binary_dilation
+
+    lit = binary_dilation(known(grid, slab[0].above), iterations=2)  # as far as smoothing reaches: cells on the horizon
+    scatterer = FurtherScatterer(grid, light, lit, slab[0].above)
     rays = int(about.pop("rays"))
     return scatterer, Traced("further scatterings", key, reused, 0 if reused else rays, rays, about)
 

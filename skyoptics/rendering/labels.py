@@ -8,13 +8,15 @@ import numpy as np
 
 from skyoptics.camera import overlay
 from skyoptics.colour.display import encode
-from skyoptics.crystals.arcs import feature
+from skyoptics.colour.observer import weights
+from skyoptics.crystals.arcs import feature, locus
 from skyoptics.figures.annotated import Annotated, annotate
 from skyoptics.figures.placement import Label
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.rendering.expose import GROUP_CELLS
 from skyoptics.rendering.named import FURTHER, OTHER, binned, own_light
 from skyoptics.rendering.run import Result
+from skyoptics.rendering.scatter import ICE_INDEX
 from skyoptics.units import FloatArray
 
 SEEN = 0.03
@@ -62,7 +64,40 @@ def arc_labels(result: Result) -> list[Label]:
         text = _TITLES.get(name) or feature(name).title
         strength = share * np.sqrt(light / light.max())  # the dot goes where the arc is bright
         found.append((_weight(share), Label(text[:1].upper() + text[1:], _anchors(strength, side))))
+    twice = _seen_twice(result, side, luminance, near)
+    if twice is not None:
+        found.append(twice)
     return [label for _, label in sorted(found, key=lambda pair: -pair[0])]
+
+
+def _seen_twice(result: Result, side: int, luminance: FloatArray, near: FloatArray) -> tuple[float, Label] | None:
+    """Return the label of the 44° parhelia where further scatterings show them: brighter there than around."""
+    from scipy.ndimage import uniform_filter
+
+    sheets = [sheet for sheet in result.sheets if sheet.name == FURTHER]
+    if not sheets:
+        return None
+    job, source = result.job, result.job.sources[0]
+    light = sheets[0].scatterers[0].phase(source, job.directions.coarse(side), slice(None))
+    own = np.nan_to_num(light @ (weights(job.bins)[:, 1] * source.irradiance))
+    share = np.divide(own, luminance, out=np.zeros_like(own), where=luminance > 0.0)
+    mean = np.divide(uniform_filter(share, 2 * AROUND + 1), near, out=np.zeros_like(share), where=near > 0.0)
+    azimuth, elevation = azimuth_elevation(source.direction)
+    points = overlay.curve(job.directions, *_shifted("parhelia_44", float(azimuth), float(elevation)))
+    points = points[np.isfinite(points).all(axis=1)]
+    cells = np.floor(points / side).astype(int)
+    strength = [float((share - mean)[row, column]) for column, row in cells]
+    if not strength or max(strength) < SEEN:
+        return None
+    text = feature("parhelia_44").title
+    anchors = np.column_stack([points, np.maximum(strength, 0.0)])
+    return max(strength), Label(text[:1].upper() + text[1:], anchors)
+
+
+def _shifted(name: str, azimuth: float, elevation: float) -> tuple[FloatArray, FloatArray]:
+    """Return the locus of a feature with the sun's azimuth added."""
+    offset, height = locus(name, elevation, ICE_INDEX)
+    return offset + azimuth, height
 
 
 def labelled(result: Result) -> FloatArray | Any:

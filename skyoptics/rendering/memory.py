@@ -6,6 +6,7 @@ from skyoptics.errors import ResourceError
 from skyoptics.rendering.build import DropSheet, Job
 from skyoptics.rendering.clouds import CrystalSheet
 from skyoptics.rendering.expose import GROUP_CELLS
+from skyoptics.rendering.further import side_of, slab_of
 from skyoptics.rendering.scatter import is_table
 
 SHARE = 0.7
@@ -18,6 +19,8 @@ _FLAT_TABLE = 250e6
 """One table of flattened drops while it is made [byte], measured with the default bins."""
 _NAMES = 20
 """Named arcs that crystals of one law may make, and a reserve."""
+_LAYER_BATCH = 150e6
+"""Exit lists of a batch through a slab, and the batch before it [byte]."""
 _TABLE = 60e6
 """One stored table and its average over the disc [byte], measured with the default bins."""
 
@@ -49,6 +52,10 @@ def predict(job: Job, threads: int, data: bool, only: bool = False) -> int:
     blocks *= components
     noise = pixels * 8 * 17 if films else 0
     flying = 3 * threads * pixels * 4 * components if films else 0
+    if slab_of(job):
+        side = side_of(job.directions)
+        cells = -(-rows // side) * -(-columns // side)
+        planes += len(job.sources) * cells * components * (8 + 4) * bands + threads * int(_LAYER_BATCH)
     flat = sum(isinstance(sheet, DropSheet) and not is_table(sheet) for sheet in job.sheets) * len(job.sources)
     return int(
         _PROGRAM

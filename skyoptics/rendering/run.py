@@ -253,11 +253,8 @@ def render(
     about = report(scene, where, settings, job, traced, developed, xyz)
     if only is not None:
         about["only"] = only
-        about["look_for"] = (
-            f"the light of {OTHER} paths alone"
-            if only == OTHER
-            else f"the light of one feature alone: {feature(only).title}"
-        )
+        what = {OTHER: "light of no named arc", FURTHER: "light that met two crystals or more"}
+        about["look_for"] = f"one part of the light alone: {what.get(only) or feature(only).title}"
     if works:
         about["lightness_error"] = float(np.sqrt(sum(part**2 for part in parts)))
         about["lightness_error_target"] = settings.sampling.target if settings.rays is None else None

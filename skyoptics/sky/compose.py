@@ -24,7 +24,7 @@ THIN = 0.2
 
 
 COVER_LIGHT = 0.02
-"""Light from the dark side of a disc held over the sun ÷ that of the sky behind it."""
+"""Light from the dark side of a disc held over the sun ÷ the background."""
 
 
 class Scatterer(Protocol):
@@ -117,7 +117,9 @@ def radiance(
             light *= amount
             total += light
     if cover > 0.0:
-        total *= _seen_past(directions, rows, sources[0], cover)[..., None]
+        seen = _seen_past(directions, rows, sources[0], cover)
+        dark = COVER_LIGHT * behind if polariser is None else 0.5 * COVER_LIGHT * behind
+        total = total * seen[..., None] + ((1.0 - seen) * dark)[..., None]
     return total
 
 
@@ -125,7 +127,7 @@ def _seen_past(directions: Directions, rows: slice, source: Source, cover: float
     """Return the share of light seen past a disc over a source, shape (ny, nx); its edge is as wide as a pixel."""
     away = angle_between(source.direction, directions.vectors(rows))
     width = np.maximum(directions.pixel_size(rows), 1e-9)
-    return COVER_LIGHT + (1.0 - COVER_LIGHT) * np.clip((away - cover) / width + 0.5, 0.0, 1.0)
+    return np.clip((away - cover) / width + 0.5, 0.0, 1.0)
 
 
 def stokes(
@@ -145,5 +147,7 @@ def stokes(
             amount = sheet.amount(elevation, source)[..., None, None]
             total += scatterer.phase(source, directions, rows, stokes=True) * source.irradiance[:, None] * amount
     if cover > 0.0:
-        total *= _seen_past(directions, rows, sources[0], cover)[..., None, None]
+        seen = _seen_past(directions, rows, sources[0], cover)
+        total *= seen[..., None, None]
+        total[..., 0] += ((1.0 - seen) * COVER_LIGHT * background.at(elevation))[..., None]
     return total

@@ -5,6 +5,7 @@ import json
 import numpy as np
 import pytest
 
+from skyoptics.cli.main import run
 from skyoptics.optics import bows
 from skyoptics.units import DEG
 
@@ -124,3 +125,76 @@ def test_asymmetry_of_random_prisms(command):
     report = json.loads(done.out)
     assert (report["asymmetry"][0] + 1) / 2 == pytest.approx(0.7704, abs=0.004)
     assert report["scattered"][0] + report["absorbed"][0] == pytest.approx(1.0, abs=2e-4)
+
+
+# ---------------------------------------------------------------- crystals of other shapes
+
+
+def own_edges(text):
+    rows = [line.split(",") for line in text.splitlines()]
+    angle = np.array([float(row[1]) for row in rows[1:]])
+    result = {}
+    for column, name in enumerate(rows[0]):
+        if name.startswith("halo_") and not name.endswith("_polarization"):
+            own = np.array([float(row[column]) for row in rows[1:]])
+            result[name] = angle[np.flatnonzero(own > 1e-3 * own.max())[0]] - 0.025
+    return result
+
+
+# Least deviation at n = 1.31 of the wedges of ice with c/a = 1.629 (wedges: Tape & Moilanen, Atmospheric Halos and the
+# Search for Angle x, AGU 2006, from memory; deviations by 2 asin(n sin(A/2)) - A)
+CIRCLES = {9: 8.952, 18: 18.271, 20: 19.902, 22: 21.839, 23: 22.864, 24: 23.818, 35: 34.925, 46: 45.733}
+
+
+@pytest.mark.parametrize(
+    ("shape", "circles"),
+    [
+        ("bipyramid", (18, 20, 35)),
+        ("prism", (22, 46)),
+        pytest.param("truncated-bipyramid", tuple(CIRCLES), marks=pytest.mark.slow),
+    ],
+)
+def test_circles_begin_at_their_closed_form(shape, circles, tmp_path):
+    file = tmp_path / "curve.csv"
+    words = ["phase", "crystal", "--shape", shape, "--index", "1.31", "--wavelength-nm", "589", "--step-deg", "0.05"]
+    assert run([*words, "--quality", "draft", "--csv", str(file)]) == 0
+    found = own_edges(file.read_text())
+    assert set(found) == {f"halo_{circle}" for circle in circles}
+    for circle in circles:
+        assert found[f"halo_{circle}"] == pytest.approx(CIRCLES[circle], abs=0.05)
+
+
+def test_parts_add_up_to_the_intensity(tmp_path):
+    file = tmp_path / "curve.csv"
+    words = ["phase", "crystal", "--index", "1.3194", "--wavelength-nm", "400", "--step-deg", "0.05"]
+    assert run([*words, "--quality", "draft", "--csv", str(file)]) == 0
+    found = own_edges(file.read_text())
+    assert found["halo_22"] == pytest.approx(22.554, abs=0.05)  # 2 asin(n/2) - 60 at n = 1.3194
+    assert found["halo_46"] == pytest.approx(47.801, abs=0.05)
+    table = np.genfromtxt(file, delimiter=",", names=True)
+    assert table["halo_22"] + table["halo_46"] + table["other"] == pytest.approx(table["intensity"], rel=1e-5, abs=1e-6)
+
+
+@pytest.mark.parametrize(
+    ("words", "told"),
+    [
+        (["--shape", "bipyramd"], "did you mean bipyramid"),
+        (["--shape", "bipyramid", "--aspect", "2"], "not for bipyramid"),
+        (["--shape", "bipyramid", "--miller", "1,1,-1,1"], "Miller"),
+        (["--face-distances", "1,1,1"], "six"),
+        (["--face-distances", "1,5,1,1,1,1"], "does not touch"),
+        (["--index", "1.31", "--birefringence"], "--extraordinary-index"),
+        (["--extraordinary-index", "1.32"], "--index"),
+        (["--draw", "crystal.gif"], ".png or .svg"),
+    ],
+)
+def test_wrong_shapes_are_told(words, told, capsys):
+    assert run(["phase", "crystal", *words]) != 0
+    assert told in capsys.readouterr().err
+
+
+def test_a_crystal_is_drawn(tmp_path, capsys):
+    file = tmp_path / "crystal.svg"
+    assert run(["phase", "crystal", "--shape", "truncated-bipyramid", "--draw", str(file)]) == 0
+    assert file.read_text().startswith("<?xml")
+    assert "faces 20" in capsys.readouterr().out

@@ -7,6 +7,7 @@ from scipy.stats import kstest
 
 from skyoptics.crystals.orientations import Orientation, projected_area, read_tilts
 from skyoptics.crystals.shapes import hexagonal_prism
+from skyoptics.crystals.sorting import sorter
 from skyoptics.crystals.tracing import (
     IDEAL,
     Imperfections,
@@ -63,6 +64,21 @@ def test_the_22_degree_edge_is_split_by_polarisation():
     beyond = (angle > 21.92) & (angle < 22.2)
     assert degree[between].mean() > 0.85  # P12 > 0: parallel to the scattering plane, radial
     assert abs(degree[beyond].mean()) < 0.06
+
+
+def test_light_beyond_the_edges_is_polarised_by_refraction_alone():
+    # Koennen, J. Opt. Soc. Am. 73, 1629 (1983): without birefringence 0.04 for the 22 degree halo, 0.16 for the 46 degree one,
+    # electric vector radial to the sun (P12 > 0)
+    body = hexagonal_prism(1.0)
+    arcs = sorter(body.face_normals, "random", 0.3, 1.31)
+    item = prepare(body, Orientation("random"), lambda w: 1.31 + 0 * w, (5.5e-7, 5.5e-7), UP, sorter=arcs)
+    table = sum(trace_angles(item, 3600, 1, batch, 2**20, False)[0] for batch in range(4))
+    angle = (np.arange(3600) + 0.5) * 0.05
+    for name, edge_deg, degree, tolerance in (("halo_22", 21.839, 0.04, 0.01), ("halo_46", 45.733, 0.16, 0.02)):
+        own = table[arcs.names.index(name)]
+        near = (angle > edge_deg) & (angle < edge_deg + 0.5)
+        assert own[near, 1].sum() / own[near, 0].sum() == pytest.approx(degree, abs=tolerance)
+        assert own[angle < edge_deg - 0.05, 0].sum() == 0.0
 
 
 def test_two_equal_indices_make_the_ideal_light():

@@ -216,7 +216,7 @@ def test_a_disc_hides_the_sun(folder, whole):
     )
     ratio = covered.xyz[..., 1] / np.where(whole.xyz[..., 1] > 0.0, whole.xyz[..., 1], np.nan)
     away = np.degrees(np.arccos(np.clip(whole.job.directions.vectors() @ whole.job.sources[0].direction, -1, 1)))
-    assert np.nanmax(ratio[away < 4.0]) == pytest.approx(0.02, rel=1e-3)
+    assert np.nanmax(ratio[away < 4.0]) == 0.0  # the background is black here
     assert np.nanmin(ratio[away > 8.0]) == pytest.approx(1.0, rel=1e-5)
     assert covered.report["traced_rays"] == 0  # nothing is traced again
 
