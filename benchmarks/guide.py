@@ -15,8 +15,9 @@ import numpy as np
 from skyoptics.camera.frame import aim, photograph
 from skyoptics.crystals.guide import learn
 from skyoptics.crystals.orientations import Orientation
+from skyoptics.crystals.prepared import prepare
 from skyoptics.crystals.shapes import hexagonal_prism
-from skyoptics.crystals.tracing import prepare, trace_plane
+from skyoptics.crystals.tracing import trace_plane
 from skyoptics.geometry.axes import direction
 from skyoptics.materials.index import ice
 from skyoptics.units import DEG

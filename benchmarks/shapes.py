@@ -13,9 +13,10 @@ import numpy as np
 
 from skyoptics.crystals.habits import Habit, shape
 from skyoptics.crystals.orientations import Orientation
+from skyoptics.crystals.prepared import Prepared, prepare
 from skyoptics.crystals.shapes import Shape, hexagonal_prism
 from skyoptics.crystals.sorting import sorter
-from skyoptics.crystals.tracing import Prepared, prepare, trace_groups, trace_plane
+from skyoptics.crystals.tracing import trace_groups, trace_plane
 from skyoptics.geometry.axes import direction
 from skyoptics.geometry.directions import Directions
 from skyoptics.units import DEG

@@ -14,8 +14,9 @@ from concurrent.futures import ThreadPoolExecutor
 import numpy as np
 
 from skyoptics.crystals.orientations import LAWS, Orientation
+from skyoptics.crystals.prepared import Prepared, prepare
 from skyoptics.crystals.shapes import Shape, hexagonal_prism
-from skyoptics.crystals.tracing import Prepared, Tally, plain_plane, prepare, trace_plane
+from skyoptics.crystals.tracing import Tally, plain_plane, trace_plane
 from skyoptics.geometry.axes import direction
 from skyoptics.geometry.directions import Directions
 from skyoptics.kernels import lanes

@@ -20,6 +20,7 @@ kind = "crystals"
 width_px = 60
 [picture]
 wavelengths_nm = [550]
+sky = "clear"
 """
 
 if __name__ == "__main__":

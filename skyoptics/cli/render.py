@@ -30,6 +30,9 @@ from skyoptics.cli.options import AzimuthElevation, SceneFile, Word, json_option
 @click.option("--noise-map", is_flag=True, help="Write a map of the error of displayed lightness too.")
 @click.option("--labels", is_flag=True, help="Write an annotated copy too: arcs by name, horizon, compass, scale.")
 @click.option(
+    "--visibility", is_flag=True, help="Say whether each bow and halo will be seen, and the best angle of a polariser."
+)
+@click.option(
     "--only",
     metavar="ARC",
     help="Show the light of one named arc alone (skyoptics scenes --arcs lists them), or other: light of no name.",
@@ -54,6 +57,7 @@ def command(
     noise_map: bool,
     stokes: bool,
     labels: bool,
+    visibility: bool,
     only: str | None,
     explain: tuple[float, float] | None,
     as_json: bool,
@@ -68,6 +72,8 @@ def command(
              skyoptics render mixed-whole-sky --only circumzenithal
              skyoptics render mixed-whole-sky --explain 180,42.5
     """
+    if visibility and only is not None:
+        raise click.UsageError("--visibility asks about the whole picture; leave --only out")
     from skyoptics.scene.files import safe_name
     from skyoptics.scene.load import load
 
@@ -93,8 +99,15 @@ def command(
     output.prepare(folder)
     progress.note_first_compilation()
     words = _command(scene, overrides, wanted, settings, stokes, only)
+    words += ["--visibility"] * visibility
     with progress.shown() as tell:
         result = render(described, str(scene), settings, tell, data, wanted.preview, stokes, only)
+        if visibility:
+            _visibility(result, described, str(scene), settings, tell)
+    from skyoptics.rendering import features
+
+    if only is None and (empty := features.warning(result.job)):
+        click.echo(f"note: {empty}", err=True)
     if changed := output.traced_otherwise(wanted, result.report):
         click.echo(f"note: {changed}", err=True)
     files = output.write(result, described, wanted, words)
@@ -110,7 +123,25 @@ def command(
         click.echo(json.dumps(result.report, ensure_ascii=False))
         click.echo(last, err=True)
     else:
+        if visibility:
+            from skyoptics.rendering.visibility import table
+
+            click.echo(table(result.report["visibility"]))
         click.echo(last)
+
+
+def _visibility(result: Any, scene: Any, where: str, settings: Any, tell: Any) -> None:
+    """Put what will be seen, and through which polariser, into the report."""
+    from skyoptics.rendering.polarised import best_polariser
+    from skyoptics.rendering.visibility import visibility
+
+    rows = visibility(result)
+    seen = [row["feature"] for row in rows if row.get("share_visible", 0.0) > 0.0]
+    best = {row.pop("feature"): row for row in best_polariser(scene, where, settings, tell, seen)} if seen else {}
+    for row in rows:
+        if row["feature"] in best:
+            row["polariser"] = {key: value for key, value in best[row["feature"]].items() if key != "title"}
+    result.report["visibility"] = rows
 
 
 def _command(

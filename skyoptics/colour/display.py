@@ -184,6 +184,29 @@ def automatic_exposure(luminance: ArrayLike) -> float:
     return round(float(np.log2(MIDDLE_GREY * one / (METER_CONSTANT / 100.0))), 1)
 
 
+def metered_exposure(luminance: ArrayLike) -> float:
+    """Return the exposure value that a reflected-light meter reads, the whole picture averaged.
+
+    Parameters
+    ----------
+    luminance : array_like
+        [cd m⁻²]; nan, infinite and negative values are left out.
+
+    Returns
+    -------
+    float
+        log2(mean · 100 / K) at ISO 100, K = 12.5 cd s m⁻² [EV]; 15 for a picture without light.
+
+    Notes
+    -----
+    ISO 2720:1974. As with a real meter a sun in the frame, or a black foreground, counts for all it is.
+    """
+    luminance = np.asarray(luminance)
+    seen = luminance[np.isfinite(luminance) & (luminance >= 0.0)]
+    mean = float(seen.mean(dtype=np.float64)) if seen.size else 0.0
+    return float(np.log2(mean * 100.0 / METER_CONSTANT)) if mean > 0.0 else EXPOSURE_WITHOUT_LIGHT
+
+
 def roll_off(value: ArrayLike) -> NDArray[Any]:
     """Return linear display luminance with the highlights bent under 1.
 

@@ -22,7 +22,8 @@ from typing import Any
 
 import numpy as np
 
-from skyoptics.crystals.tracing import Guide, Prepared, trace_exits
+from skyoptics.crystals.prepared import Guide, Prepared
+from skyoptics.crystals.tracing import trace_exits
 from skyoptics.kernels.crystal import OFFSET_DIMENSION
 from skyoptics.kernels.lanes import CHUNK
 from skyoptics.kernels.orient import AZIMUTH, ENTRY_FIRST, ENTRY_SECOND, SPIN, TILT, TILT_DIRECTION
@@ -86,7 +87,7 @@ def learn(prepared: Prepared, directions: Float32Array, seed: int) -> Guide | No
     Parameters
     ----------
     prepared : Prepared
-        From `skyoptics.crystals.tracing.prepare`, for the whole spectrum at once.
+        From `skyoptics.crystals.prepared.prepare`, for the whole spectrum at once.
     directions : ndarray
         The frame, `Directions.packed()`.
     seed : int

@@ -20,8 +20,9 @@ from typing import Any, Protocol
 import numpy as np
 
 from skyoptics.crystals.orientations import Orientation, relative_extinction
+from skyoptics.crystals.prepared import EVENLY, Prepared
 from skyoptics.crystals.shapes import Shape
-from skyoptics.crystals.tracing import EVENLY, MAXIMUM_RAYS, ExitList, Incoming, Prepared, Tally, trace_exits
+from skyoptics.crystals.tracing import MAXIMUM_RAYS, ExitList, Incoming, Tally, trace_exits
 from skyoptics.errors import DomainError
 from skyoptics.kernels.layer import KNOTS, begin, leave, pick
 from skyoptics.kernels.projection import SPARE
@@ -146,7 +147,7 @@ def layer_kind(
     Parameters
     ----------
     prepared : sequence of Prepared
-        From `skyoptics.crystals.tracing.prepare`, one for each spectral bin; a guide in them is not used, since it
+        From `skyoptics.crystals.prepared.prepare`, one for each spectral bin; a guide in them is not used, since it
         knows the first order alone.
     shape, orientation :
         As given to `prepare`.

@@ -6,7 +6,8 @@ from dataclasses import replace
 
 import numpy as np
 
-from skyoptics.crystals.tracing import Prepared, trace_plane
+from skyoptics.crystals.prepared import Prepared
+from skyoptics.crystals.tracing import trace_plane
 from skyoptics.geometry.directions import Directions
 from skyoptics.units import FloatArray
 
@@ -24,7 +25,7 @@ def phase_matrix(
     Parameters
     ----------
     prepared : Prepared
-        From `skyoptics.crystals.tracing.prepare`; its own polarisation is not looked at.
+        From `skyoptics.crystals.prepared.prepare`; its own polarisation is not looked at.
     directions : Directions
         Grid.
     seed, batches, rays : int

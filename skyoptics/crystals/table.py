@@ -8,9 +8,10 @@ from typing import Any
 import numpy as np
 
 from skyoptics.crystals.orientations import Orientation
+from skyoptics.crystals.prepared import IDEAL, Imperfections, Prepared, prepare
 from skyoptics.crystals.shapes import Shape
 from skyoptics.crystals.sorting import Sorter
-from skyoptics.crystals.tracing import IDEAL, Imperfections, Prepared, Tally, prepare, trace_angles
+from skyoptics.crystals.tracing import Tally, trace_angles
 from skyoptics.errors import DomainError
 from skyoptics.optics.batches import Executor, batches_needed, in_order
 from skyoptics.optics.bins import Bins

@@ -1,7 +1,8 @@
-"""What clear air takes out of sunlight on its way to the observer.
+"""What clear air takes out of sunlight on its way to the observer, to a cloud, or between two heights.
 
-Molecules, ozone and haze, each by its own published law. Water vapour and oxygen bands (from 690 nm up) and refraction
-are left out. Elevations are apparent ones, as seen.
+Molecules, ozone, haze, water vapour and oxygen, each by its own published law along the true path through a round,
+refracting atmosphere (`skyoptics.light.slant`). Elevations are apparent ones, as seen. `air_mass` and `ozone_air_mass` are
+the usual closed forms for an observer on the ground.
 """
 
 from __future__ import annotations
@@ -10,6 +11,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from skyoptics.light import layers, slant
+from skyoptics.light.gases import OXYGEN_PRESSURE, oxygen_transmission, vapour_transmission
 from skyoptics.materials.ranges import within
 from skyoptics.units import DEG, NM, UM, ArrayLike, FloatArray
 
@@ -181,6 +184,10 @@ class Air:
         Vertical optical depth of haze at 550 nm, 0 to 5 [1]; default 0.1, clean continental air (common practice).
     aerosol_exponent : float
         Ångström exponent, −1 to 4 [1]; default 1.3 (common practice).
+    water_vapour_cm : float
+        Vertical column of water vapour as liquid, 0 to 10 cm; default 1.42, the US Standard Atmosphere (ASTM G173-03).
+    aerosol_height : float
+        Scale height of haze, 100 m to 10 km [m]; default 2 km (common practice: 1 to 2 km).
 
     Raises
     ------
@@ -192,38 +199,105 @@ class Air:
     ozone: float = 300.0
     aerosol_depth_550: float = 0.1
     aerosol_exponent: float = 1.3
+    water_vapour_cm: float = 1.42
+    aerosol_height: float = 2000.0
 
     def __post_init__(self) -> None:
         within("air pressure", self.pressure, 0.0, 1.1e5, "hPa", 100.0)
         within("ozone column", self.ozone, 0.0, 1000.0, "DU")
         within("aerosol optical depth at 550 nm", self.aerosol_depth_550, 0.0, 5.0)
         within("aerosol exponent", self.aerosol_exponent, -1.0, 4.0)
+        within("water vapour column", self.water_vapour_cm, 0.0, 10.0, "cm")
+        within("scale height of haze", self.aerosol_height, 100.0, 1e4, "m")
 
-    def transmission(self, wavelength: ArrayLike, elevation: ArrayLike) -> FloatArray:
-        """Return the share of direct light that reaches the observer from outside the atmosphere.
+    @property
+    def profile(self) -> layers.Profile:
+        """How it is layered; its refraction goes with its pressure."""
+        refractivity = layers.REFRACTIVITY * self.pressure / STANDARD_PRESSURE
+        return layers.Profile(haze_height=self.aerosol_height, refractivity=refractivity)
+
+    def transmission(self, wavelength: ArrayLike, elevation: ArrayLike, height: float = 0.0) -> FloatArray:
+        """Return the share of direct light that comes from outside the atmosphere down to a height.
 
         Parameters
         ----------
         wavelength : array_like
             0.25 to 1.7 µm [m].
         elevation : array_like, broadcastable
-            Apparent elevation, −1° to 90° [rad].
+            Of the source as the observer on the ground sees it, from 1° below the horizon of that height to 90° [rad].
+            Below that horizon the horizon's value is used: a sun that is setting.
+        height : float
+            Above the observer, 0 to 100 km [m]. Higher up the source stands lower by the refraction that is missing
+            there (`skyoptics.light.slant.aloft`).
 
         Returns
         -------
         ndarray
-            exp(−m (τ_molecules + τ_haze) − m_ozone τ_ozone) [1].
+            [1]
 
         Raises
         ------
         DomainError
             Outside these ranges.
         """
-        low = rayleigh_depth(wavelength, self.pressure) + aerosol_depth(
-            wavelength, self.aerosol_depth_550, self.aerosol_exponent
-        )
-        high = ozone_depth(wavelength, self.ozone)
-        return np.exp(-air_mass(elevation) * low - ozone_air_mass(elevation) * high)
+        profile = self.profile
+        lowest = MINIMUM_ELEVATION + float(slant.dip(height, profile))
+        seen = within("elevation", elevation, lowest, 90.0 * DEG, "°", DEG)
+        if height > 0.0:
+            seen = slant.aloft(seen, height, profile)
+        return self.through(wavelength, slant.to_space(seen, height, profile))
+
+    def between(self, wavelength: ArrayLike, elevation: ArrayLike, low: ArrayLike, high: ArrayLike) -> FloatArray:
+        """Return the share of light that passes between two heights.
+
+        Parameters
+        ----------
+        wavelength : array_like
+            0.25 to 1.7 µm [m].
+        elevation : array_like, broadcastable
+            Of the line of sight at the lower end, 0° to 90° [rad].
+        low, high : array_like, broadcastable
+            Above the observer, 0 to 100 km, ascending [m].
+
+        Returns
+        -------
+        ndarray
+            1 where both heights are the same [1].
+
+        Raises
+        ------
+        DomainError
+            Outside these ranges.
+        """
+        return self.through(wavelength, slant.between(elevation, low, high, self.profile))
+
+    def through(self, wavelength: ArrayLike, path: slant.Path) -> FloatArray:
+        """Return the share of light that passes a path.
+
+        Parameters
+        ----------
+        wavelength : array_like
+            0.25 to 1.7 µm [m].
+        path : Path, broadcastable
+            From `skyoptics.light.slant`. Legs are to be added before, since bands of water vapour and oxygen saturate:
+            the product of two transmissions is there less than that of both legs together.
+
+        Returns
+        -------
+        ndarray
+            exp(−Σ columns · τ) of molecules, ozone and haze, times what water vapour and oxygen let through [1].
+
+        Raises
+        ------
+        DomainError
+            For wavelengths outside this range.
+        """
+        depth = path.molecules * rayleigh_depth(wavelength, self.pressure)
+        depth = depth + path.ozone * ozone_depth(wavelength, self.ozone)
+        depth = depth + path.haze * aerosol_depth(wavelength, self.aerosol_depth_550, self.aerosol_exponent)
+        vapour = vapour_transmission(wavelength, self.water_vapour_cm * path.vapour)
+        oxygen = oxygen_transmission(wavelength, path.molecules * (self.pressure / OXYGEN_PRESSURE))
+        return np.exp(-depth) * vapour * oxygen
 
 
 def _height(elevation: ArrayLike) -> FloatArray:

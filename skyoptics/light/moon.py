@@ -43,6 +43,19 @@ def magnitude(phase_angle: ArrayLike) -> FloatArray:
     return -12.73 + 0.026 * alpha + 4e-9 * alpha**4
 
 
+def moonlight(phase_angle: float) -> FloatArray:
+    """Return the moon's irradiance above the air at the wavelengths of `skyoptics.light.spectrum.samples` [W m⁻² nm⁻¹].
+
+    Parameters
+    ----------
+    phase_angle : float
+        0 at full moon [rad].
+    """
+    wavelength, irradiance = spectrum.samples()
+    share = 10.0 ** (-0.4 * (float(magnitude(phase_angle)) - SUN_MAGNITUDE))
+    return np.asarray(irradiance * share * (wavelength / (550.0 * NM)) ** REDNESS)
+
+
 def moon(
     elevation: float, azimuth: float, phase_angle: float, bins: Bins, air: Air | None, disc: bool = True
 ) -> Source:
@@ -61,9 +74,8 @@ def moon(
     disc : bool
         Its even disc, or a point.
     """
-    wavelength, irradiance = spectrum.samples()
-    share = 10.0 ** (-0.4 * (float(magnitude(phase_angle)) - SUN_MAGNITUDE))
-    seen = irradiance * share * (wavelength / (550.0 * NM)) ** REDNESS
+    wavelength, _ = spectrum.samples()
+    seen = moonlight(phase_angle)
     if air is not None:
         seen = seen * air.transmission(wavelength, elevation)
     point = Disc.point(len(bins))

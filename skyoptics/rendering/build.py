@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import partial
 
 import numpy as np
@@ -19,18 +19,20 @@ from skyoptics.droplets.spectra import read_spectrum
 from skyoptics.errors import DataFileError, DomainError, Fault, SceneError
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.geometry.directions import Directions
-from skyoptics.light.air import Air
+from skyoptics.light.air import MINIMUM_ELEVATION, Air
+from skyoptics.light.disc import SUN_RADIUS
 from skyoptics.light.mirror import in_water
-from skyoptics.light.moon import moon
+from skyoptics.light.moon import RADIUS as MOON_RADIUS
+from skyoptics.light.moon import moon, moonlight
 from skyoptics.light.sun import sun
 from skyoptics.materials import index as material
 from skyoptics.optics.bins import Bins
 from skyoptics.optics.source import Source
 from skyoptics.rendering.clouds import CrystalSheet, crystal_sheet, curtain_amount, hang, layer_amount
-from skyoptics.scene.model import Scene
+from skyoptics.scene.model import Light, Scene
 from skyoptics.scene.particles import Crystals, Drops
-from skyoptics.sky.compose import Background
-from skyoptics.units import CELSIUS_ZERO, NM, FloatArray
+from skyoptics.sky.compose import Background, Behind
+from skyoptics.units import CELSIUS_ZERO, DEG, NM, FloatArray
 
 DEFAULT_EDGES_NM = (380.0, 400.0, 415.0, *np.arange(430.0, 681.0, 10.0).tolist(), 695.0, 715.0, 740.0, 780.0)
 """Edges of the default bins [nm]: 10 nm where the eye sees well, wider at the ends."""
@@ -90,7 +92,7 @@ class Job:
         What scatters.
     directions : Directions
         The picture's pixels.
-    background : Background
+    background : Behind
         What lies behind.
     polariser : float or None
         Axis of a polariser on the lens, from the top of the picture, clockwise from behind the camera [rad].
@@ -106,7 +108,7 @@ class Job:
     sources: tuple[Source, ...]
     sheets: tuple[DropSheet | CrystalSheet, ...]
     directions: Directions
-    background: Background
+    background: Behind
     polariser: float | None = None
     stokes: bool = False
     by_moon: bool = False
@@ -158,6 +160,8 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
         hung = hang([sheet for _, sheet in crystals], kinds, scene.mixture)
     for (place, _), sheet in zip(crystals, hung, strict=True):
         sheets[place] = sheet
+    with _blame(where, "picture"):
+        background = _behind(scene, bins, sources[0])
     with _blame(where, "camera"):
         directions = _directions(scene, sources[0])
     return Job(
@@ -165,7 +169,7 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
         sources,
         tuple(sheets),
         directions,
-        Background(scene.picture.background, scene.picture.ground),
+        background,
         scene.camera.polariser,
         stokes or scene.camera.polariser is not None,
         scene.light.body == "moon",
@@ -188,23 +192,81 @@ def spectral_bins(scene: Scene) -> Bins:
 
 def _sources(scene: Scene, bins: Bins) -> tuple[Source, ...]:
     light = scene.light
-    air = None
-    if light.attenuation == "air":
-        air = Air(
-            pressure=light.pressure,
-            ozone=light.ozone_du,
-            aerosol_depth_550=light.aerosol_depth,
-            aerosol_exponent=light.aerosol_exponent,
-        )
+    elevation, azimuth, phase_angle, radius = placed(light)
+    air = _air(light) if light.attenuation == "air" else None
     disc = light.disc != "point"
     if light.body == "moon":
-        first = moon(light.elevation, light.azimuth, light.phase_angle, bins, air, disc)
+        first = moon(elevation, azimuth, phase_angle, bins, air, disc)
     else:
-        first = sun(light.elevation, light.azimuth, bins, air, disc)
+        first = sun(elevation, azimuth, bins, air, disc)
+    if radius is not None:  # nearer is larger, and brighter
+        mean = MOON_RADIUS if light.body == "moon" else SUN_RADIUS
+        first = replace(
+            first,
+            irradiance=first.irradiance * (radius / mean) ** 2,
+            disc=replace(first.disc, radius=radius) if disc else first.disc,
+        )
     if not light.mirrored:
         return (first,)
     water = material.water(CELSIUS_ZERO + 10.0, scene.medium.kind)(bins.edges.ravel()).real.reshape(-1, 2).mean(axis=1)
     return first, in_water(first, water)
+
+
+def _air(light: Light) -> Air:
+    return Air(
+        pressure=light.pressure,
+        ozone=light.ozone_du,
+        aerosol_depth_550=light.aerosol_depth,
+        aerosol_exponent=light.aerosol_exponent,
+        water_vapour_cm=light.water_vapour_cm,
+    )
+
+
+def _behind(scene: Scene, bins: Bins, source: Source) -> Behind:
+    """Return what lies behind the particles."""
+    picture = scene.picture
+    if picture.sky == "plain":
+        return Background(picture.background, picture.ground, len(bins))
+    from skyoptics.sky.clear import ClearSky
+    from skyoptics.sky.overcast import StandardSky
+
+    above = moonlight(placed(scene.light)[2]) if scene.light.body == "moon" else None
+    clear = ClearSky(bins, source.direction, _air(scene.light), picture.ground, above)
+    if picture.sky == "clear":
+        return clear
+    falling = clear.diffuse + clear.direct
+    return StandardSky.cloud(1, source.direction, falling, picture.cloud_depth, picture.ground)
+
+
+def placed(light: Light) -> tuple[float, float, float, float | None]:
+    """Return apparent elevation, azimuth, the moon's phase angle and the disc's radius [rad], the last None for the mean.
+
+    Raises
+    ------
+    DomainError
+        If place and time are given and the body is below the horizon: the text says when it rises.
+    """
+    if light.elevation is not None:
+        assert light.azimuth is not None
+        return light.elevation, light.azimuth, light.phase_angle, None
+    from skyoptics.light import position, rising
+
+    assert light.latitude_deg is not None
+    assert light.longitude_deg is not None
+    assert light.when is not None
+    where = (
+        light.latitude_deg,
+        light.longitude_deg,
+        light.when,
+        light.height_m,
+        light.pressure_hpa,
+        light.temperature_c,
+    )
+    seen = position.moon(*where) if light.body == "moon" else position.sun(*where)
+    if seen.elevation_deg * DEG < MINIMUM_ELEVATION:
+        raise DomainError(rising.describe(light.body, *where))
+    phase = getattr(seen, "phase_angle_deg", 0.0)
+    return seen.elevation_deg * DEG, seen.azimuth_deg * DEG, phase * DEG, seen.angular_radius_deg * DEG
 
 
 def _index(particles: Drops | Crystals, medium: str) -> material.RefractiveIndex:

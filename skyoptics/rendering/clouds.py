@@ -11,8 +11,8 @@ import numpy as np
 from skyoptics.crystals import habits
 from skyoptics.crystals.layer import extinction_at, extinction_table
 from skyoptics.crystals.orientations import Orientation, read_tilts, relative_extinction
+from skyoptics.crystals.prepared import IDEAL, Imperfections
 from skyoptics.crystals.shapes import Shape
-from skyoptics.crystals.tracing import IDEAL, Imperfections
 from skyoptics.errors import DomainError
 from skyoptics.materials import index as material
 from skyoptics.optics.source import Source

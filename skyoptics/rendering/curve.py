@@ -193,8 +193,8 @@ def crystal(asked: CrystalCurve, progress: Progress = silent) -> Curve:
     """
     from skyoptics.crystals import habits
     from skyoptics.crystals import table as tables
+    from skyoptics.crystals.prepared import Imperfections
     from skyoptics.crystals.sorting import sorter
-    from skyoptics.crystals.tracing import Imperfections
     from skyoptics.rendering.clouds import BIREFRINGENCE, SHAPES, SHAPES_SEED
 
     bins = Bins.lines(np.array(asked.wavelength_nm) * NM)

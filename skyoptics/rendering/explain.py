@@ -106,7 +106,7 @@ def explain(
             scatterer, _ = further.find(slab, whole_sky(job), source, settings.sampling, executor, progress, side=1)
             light = weights(job.bins)[:, 1] * source.irradiance
             found.append(_entry(FURTHER, "crystals of the slab", float(scatterer.phase(source, spot)[0, 0] @ light)))
-    background = job.background.at(elevation)[0, 0] * float(weights(job.bins)[:, 1].sum())
+    background = job.background.radiance(spot.vectors())[0, 0] @ weights(job.bins)[:, 1]
     found.append(_entry("background", "", float(background)))
     total = sum(entry["luminance"] for entry in found)
     shares = [_share(entry, total) for entry in found if entry["luminance"] > 0.0]

@@ -21,8 +21,9 @@ from skyoptics.colour.display import exposure_scale, roll_off
 from skyoptics.colour.observer import weights
 from skyoptics.crystals import guide
 from skyoptics.crystals.orientations import relative_extinction
+from skyoptics.crystals.prepared import Guide, Prepared, prepare
 from skyoptics.crystals.sorting import Sorter, sorter
-from skyoptics.crystals.tracing import Guide, Prepared, coarse_shape, prepare, trace_groups, trace_plane
+from skyoptics.crystals.tracing import coarse_shape, trace_groups, trace_plane
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.kernels import KERNEL_HASH
 from skyoptics.kernels.imperfect import TURN

@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 
 from skyoptics.crystals.layer import Layer, LayerTally, layer_kind, trace_layer
-from skyoptics.crystals.tracing import prepare
+from skyoptics.crystals.prepared import prepare
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.geometry.directions import Directions
 from skyoptics.kernels import KERNEL_HASH

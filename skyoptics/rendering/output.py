@@ -23,6 +23,11 @@ from skyoptics.units import Float32Array
 
 EXTRA = ("exr", "tiff")
 """Linear float images that can be asked for."""
+ABSOLUTE = {
+    "Unit": "cd m-2",
+    "Values": "absolute, linear, sRGB primaries: luminance = 0.2126 R + 0.7152 G + 0.0722 B; no exposure, no white balance",
+}
+"""What a linear image says about its numbers (IEC 61966-2-1 primaries)."""
 NOISE_WHITE = 0.05
 """Error of displayed lightness that a noise map shows as white [1]."""
 
@@ -142,9 +147,9 @@ def write(result: Result, scene: Scene, wanted: Wanted, command: Sequence[str]) 
         more = {key.lower().replace(" ", "_"): entries[key] for key in ("Scene hash", "Seed", "Quality")}
         dataset.write(dataset.dataset(result, provenance | more), wanted.path("nc"))
     if "exr" in wanted.extra:
-        images.write_exr(wanted.path("exr"), linear_rgb(result.xyz), text=entries)
+        images.write_exr(wanted.path("exr"), linear_rgb(result.xyz), text=entries | ABSOLUTE)
     if "tiff" in wanted.extra:
-        images.write_tiff(wanted.path("tiff"), linear_rgb(result.xyz), text=entries)
+        images.write_tiff(wanted.path("tiff"), linear_rgb(result.xyz), text=entries | ABSOLUTE)
     if wanted.noise_map:
         images.write_png(wanted.path("noise.png"), noise_picture(result), text=entries)
     if wanted.labels:

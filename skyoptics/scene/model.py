@@ -8,11 +8,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Mapping
+from datetime import datetime
 from typing import Annotated, Any, Literal
 
-from pydantic import AfterValidator, Discriminator, Field, Strict, Tag
+from pydantic import AfterValidator, BeforeValidator, Discriminator, Field, Strict, Tag
 
 from skyoptics.errors import DomainError
+from skyoptics.light.zones import parse_time
 from skyoptics.scene.fields import listing, note, number, text
 from skyoptics.scene.particles import KINDS, AnyParticles, Drops, Particles
 from skyoptics.scene.table import Conflict, Table, distinct, one_turn
@@ -20,6 +22,9 @@ from skyoptics.units import DEG, HPA, MM, NM
 
 __all__ = ["KINDS", "Aim", "Camera", "Drops", "Light", "Medium", "Particles", "Picture", "Scene", "Table"]
 
+AZIMUTH_DEG = 180.0
+BACKGROUND = 0.01
+CLOUD_DEPTH = 30.0
 FOCAL_MM = 24.0
 SENSOR_MM = (36.0, 24.0)
 PANORAMA_DEG = (360.0, 180.0)
@@ -40,10 +45,27 @@ class Light(Table):
         bool, note("Whether calm water adds the light of its mirror image, from as far below the horizon")
     ] = False
 
-    elevation_deg: Annotated[float, number(-1, 90, "degrees", "Height of the sun's centre above the horizon")]
+    elevation_deg: Annotated[
+        float | None,
+        number(-1, 90, "degrees", "Height of the sun's or moon's centre above the horizon; or give place and time"),
+    ] = None
     azimuth_deg: Annotated[
-        float, number(-360, 360, "degrees", "Azimuth of the sun, clockwise from north"), AfterValidator(one_turn)
-    ] = 180.0
+        float,
+        number(-360, 360, "degrees", "Azimuth of the sun or moon, clockwise from north"),
+        AfterValidator(one_turn),
+    ] = AZIMUTH_DEG
+    latitude_deg: Annotated[
+        float | None, number(-90, 90, "degrees", "Latitude of the place, north positive, instead of elevation_deg")
+    ] = None
+    longitude_deg: Annotated[float | None, number(-180, 180, "degrees", "Longitude of the place, east positive")] = None
+    time: Annotated[
+        str | None,
+        text(60, "When: ISO 8601 with an offset, 2027-05-12T19:40+02:00, or local time with zone"),
+        BeforeValidator(lambda value: value.isoformat() if isinstance(value, datetime) else value),
+    ] = None
+    zone: Annotated[str | None, text(60, "Time zone of a local time by its name, such as Europe/Zurich")] = None
+    height_m: Annotated[float, number(-500, 9000, "m", "Height of the place above the sea")] = 0.0
+    temperature_c: Annotated[float, number(-80, 60, "°C", "Temperature of the air, for refraction")] = 10.0
     disc: Annotated[
         Literal["sun", "point"], note("The sun's limb-darkened disc, or a point of the same irradiance")
     ] = "sun"
@@ -55,17 +77,25 @@ class Light(Table):
     aerosol_exponent: Annotated[
         float, number(0, 3, "", "Ångström exponent of the haze: its optical depth goes as wavelength to minus this")
     ] = 1.3
+    water_vapour_cm: Annotated[
+        float, number(0, 10, "cm", "Water vapour over the observer, as depth of liquid water")
+    ] = 1.42
     pressure_hpa: Annotated[float, number(100, 1100, "hPa", "Air pressure at the observer")] = 1013.25
 
     @property
-    def elevation(self) -> float:
-        """Elevation [rad]."""
-        return self.elevation_deg * DEG
+    def elevation(self) -> float | None:
+        """Elevation [rad]; None where place and time decide."""
+        return None if self.elevation_deg is None else self.elevation_deg * DEG
 
     @property
-    def azimuth(self) -> float:
-        """Azimuth [rad]."""
-        return self.azimuth_deg * DEG
+    def azimuth(self) -> float | None:
+        """Azimuth [rad]; None where place and time decide."""
+        return None if self.elevation_deg is None else self.azimuth_deg * DEG
+
+    @property
+    def when(self) -> datetime | None:
+        """The instant; None without a time."""
+        return None if self.time is None else parse_time(self.time, self.zone)
 
     @property
     def pressure(self) -> float:
@@ -79,9 +109,32 @@ class Light(Table):
 
     @classmethod
     def conflicts(cls, values: Mapping[str, Any]) -> Iterator[Conflict]:
-        """Yield a mirror image of what is below the horizon."""
-        if values.get("mirrored") is True and values.get("elevation_deg", 1.0) <= 0.0:
+        """Yield place and time beside a direction, parts of them that are missing, and a mirror image below the horizon."""
+        if values.get("mirrored") is True and (values.get("elevation_deg") or 1.0) <= 0.0:
             yield "mirrored", "water mirrors what stands above the horizon; take light.elevation_deg above 0"
+        places = ("latitude_deg", "longitude_deg", "time")
+        if not {"elevation_deg", "azimuth_deg", "phase_angle_deg", "zone", *places} <= values.keys():
+            return
+        given = [key for key in places if values[key] is not None]
+        if values["elevation_deg"] is not None:
+            if given:
+                yield given[0], "cannot stand beside elevation_deg; give a direction, or place and time"
+            return
+        if not given:
+            yield "elevation_deg", "is missing; give the height of the sun, or latitude_deg, longitude_deg and time"
+            return
+        missing = [key for key in places if values[key] is None]
+        if missing:
+            yield missing[0], f"is missing beside {given[0]}; place and time are latitude_deg, longitude_deg and time"
+        if values["azimuth_deg"] != AZIMUTH_DEG:
+            yield "azimuth_deg", "cannot stand beside latitude_deg; place and time decide it"
+        if values["phase_angle_deg"] != 0.0:
+            yield "phase_angle_deg", "cannot stand beside latitude_deg; place and time decide it"
+        if values["time"] is not None:
+            try:
+                parse_time(values["time"], values["zone"])
+            except DomainError as error:
+                yield "time", str(error)
 
 
 class Medium(Table):
@@ -159,6 +212,11 @@ class Camera(Table):
         float | None,
         number(0, 180, "degrees", "Height of a panorama, in elevation", above=True, default=PANORAMA_DEG[1]),
     ] = None
+    aperture: Annotated[
+        float | None, number(0.5, 256, "", "f-number; with exposure_s and iso it fixes the exposure")
+    ] = None
+    exposure_s: Annotated[float | None, number(1e-6, 1e5, "s", "Exposure time, beside aperture and iso")] = None
+    iso: Annotated[float | None, number(1, 1e7, "", "ISO speed of the sensor, beside aperture and exposure_s")] = None
     polariser_deg: Annotated[
         float | None,
         number(
@@ -221,9 +279,18 @@ class Camera(Table):
 
     @classmethod
     def conflicts(cls, values: Mapping[str, Any]) -> Iterator[Conflict]:
-        """Yield keys of the wrong kind of lens, too wide a field and a picture side that comes out too long."""
+        """Yield keys of the wrong kind of lens, too wide a field, a side that comes out too long, half an exposure."""
         lens = values.get("lens")
         given = [key for key, value in values.items() if value is not None]
+        settings = ("aperture", "exposure_s", "iso")
+        if set(settings) <= values.keys():
+            missing = [key for key in settings if key not in given]
+            if missing and len(missing) < len(settings):
+                there = next(key for key in settings if key in given)
+                yield (
+                    missing[0],
+                    f"is missing beside {there}; an exposure takes aperture, exposure_s and iso, or none of them",
+                )
         if lens == "panorama":
             for key in ("focal_mm", "sensor_mm"):
                 if key in given:
@@ -282,17 +349,55 @@ class Picture(Table):
     exposure_ev: Annotated[
         float | None, number(-20, 40, "EV", "Exposure; left out, it is chosen from the picture's brightness")
     ] = None
-    background: Annotated[
-        float, number(0, 1e6, "W m⁻² sr⁻¹ nm⁻¹", "Spectral radiance of the sky behind, the same at every wavelength")
-    ] = 0.01
-    ground: Annotated[float, number(0, 1, "", "Share of the background's radiance seen below the horizon")] = 0.25
-    white: Annotated[
-        Literal["display", "light"],
+    metering: Annotated[
+        Literal["sky", "average"],
         note(
-            "What looks neutral: equal to the display's white (nothing is adapted), or the light that falls on the "
-            "particles"
+            "What chooses an exposure that is left out: a rule for bows and halos before a sky, or the mean of the picture, as "
+            "a reflected-light meter takes it"
+        ),
+    ] = "sky"
+    sky: Annotated[
+        Literal["plain", "clear", "overcast"],
+        note(
+            "What lies behind: one plain radiance; the clear sky with the light and air of [light]; or a closed level cloud "
+            "under it"
+        ),
+    ] = "plain"
+    cloud_depth: Annotated[
+        float, number(1, 1000, "", 'Optical depth of the cloud with sky = "overcast"; 100 makes a dark rain cloud')
+    ] = CLOUD_DEPTH
+    background: Annotated[
+        float,
+        number(0, 1e6, "W m⁻² sr⁻¹ nm⁻¹", "Spectral radiance of a plain sky behind, the same at every wavelength"),
+    ] = BACKGROUND
+    ground: Annotated[
+        float,
+        number(
+            0, 1, "", "Share of a plain background's radiance seen below the horizon; albedo of the ground under a sky"
+        ),
+    ] = 0.25
+    white: Annotated[
+        Literal["display", "light", "daylight", "auto"],
+        note(
+            "What looks neutral: equal to the display's white (nothing is adapted), the light that falls on the "
+            "particles, daylight of 5500 K, or a light found in the picture, 3000 to 7000 K"
         ),
     ] = "display"
+    white_kelvin: Annotated[
+        float | None, number(2000, 25000, "K", "Colour temperature of the light that looks neutral, instead of white")
+    ] = None
+    glare: Annotated[
+        Literal["none", "eye"],
+        note(
+            "Whether bright things are spread as by the eye's optics, the sun or moon in the picture drawn among them"
+        ),
+    ] = "none"
+    show_sun: Annotated[
+        bool | None,
+        note(
+            "Whether the sun or moon itself is drawn, a round disc of its true brightness; left out, it is where there is glare"
+        ),
+    ] = None
     observer: Annotated[
         Literal["1931", "1964", "scotopic"],
         note(
@@ -313,9 +418,21 @@ class Picture(Table):
 
     @classmethod
     def conflicts(cls, values: Mapping[str, Any]) -> Iterator[Conflict]:
-        """Yield the conflict between wavelengths_nm and bin_nm."""
+        """Yield what would decide twice: wavelengths, exposure or white; and whites for an eye without colours."""
+        if values.get("exposure_ev") is not None and values.get("metering", "sky") != "sky":
+            yield "metering", "has nothing to decide beside exposure_ev; keep one of the two"
+        if values.get("white_kelvin") is not None and values.get("white", "display") != "display":
+            yield "white_kelvin", "cannot stand beside white; keep one of the two"
+        if values.get("observer") == "scotopic":
+            for key in ("white_kelvin", "white"):
+                if values.get(key) not in (None, "display", "light"):
+                    yield key, "has nothing to balance: the dark-adapted eye sees no colours"
         if values.get("wavelengths_nm") is not None and values.get("bin_nm") is not None:
             yield "bin_nm", "cannot stand beside wavelengths_nm; keep one of the two"
+        if values.get("sky", "plain") != "plain" and values.get("background", BACKGROUND) != BACKGROUND:
+            yield "background", 'is for sky = "plain"; leave it out'
+        if values.get("sky", "overcast") != "overcast" and values.get("cloud_depth", CLOUD_DEPTH) != CLOUD_DEPTH:
+            yield "cloud_depth", 'is for sky = "overcast"; leave it out'
 
 
 class Mixture(Table):

@@ -57,17 +57,37 @@ class Sheet:
     amount: Callable[[FloatArray, Source], FloatArray]
 
 
-@dataclass(frozen=True)
+class Behind(Protocol):
+    """What lies behind the particles: `Background`, or a sky (`skyoptics.sky.clear`, `skyoptics.sky.overcast`)."""
+
+    def radiance(self, vectors: FloatArray) -> FloatArray:
+        """Return the spectral radiance in viewing directions (..., 3), shape (..., nλ); nan for nan."""
+
+
+@dataclass(frozen=True, eq=False)
 class Background:
-    """A plain background: one spectral radiance above the horizon, a share of it below [W m⁻² sr⁻¹ nm⁻¹; 1]."""
+    """A plain background: one spectral radiance above the horizon, a share of it below.
 
-    radiance: float
+    Parameters
+    ----------
+    level : float
+        Above the horizon, at every wavelength [W m⁻² sr⁻¹ nm⁻¹].
+    ground : float
+        Share of it below [1].
+    bands : int
+        Number of spectral bins.
+    """
+
+    level: float
     ground: float
+    bands: int
 
-    def at(self, elevation: FloatArray) -> FloatArray:
-        """Return the radiance at elevations [rad]; nan stays nan."""
-        result = np.where(elevation >= 0.0, self.radiance, self.radiance * self.ground)
-        return np.where(np.isnan(elevation), np.nan, result)
+    def radiance(self, vectors: FloatArray) -> FloatArray:
+        """Return the radiance in viewing directions, shape (..., nλ); nan for nan."""
+        _, elevation = azimuth_elevation(vectors)
+        result = np.where(elevation >= 0.0, self.level, self.level * self.ground)
+        result = np.where(np.isnan(elevation), np.nan, result)
+        return np.repeat(result[..., None], self.bands, axis=-1)
 
 
 def radiance(
@@ -75,7 +95,7 @@ def radiance(
     rows: slice,
     sources: Sequence[Source],
     sheets: Sequence[Sheet],
-    background: Background,
+    background: Behind,
     polariser: FloatArray | None = None,
     cover: float = 0.0,
 ) -> FloatArray:
@@ -89,8 +109,8 @@ def radiance(
         Which rows.
     sources, sheets : sequence
         What shines and what scatters; at least one source. Each sheet has a scatterer for each source.
-    background : Background
-        What lies behind, unpolarised.
+    background : Behind
+        What lies behind, taken as unpolarised.
     polariser : ndarray, shape (ny, nx), optional
         Position angle of the axis of an ideal linear polariser in front of each direction's light [rad].
     cover : float, optional
@@ -101,9 +121,12 @@ def radiance(
     ndarray, shape (ny, nx, nλ)
         Bin means [W m⁻² sr⁻¹ nm⁻¹]; nan outside the image.
     """
-    _, elevation = azimuth_elevation(directions.vectors(rows))
-    behind = background.at(elevation)
-    total = np.repeat((behind if polariser is None else 0.5 * behind)[..., None], len(sources[0].irradiance), axis=-1)
+    vectors = directions.vectors(rows)
+    _, elevation = azimuth_elevation(vectors)
+    behind = background.radiance(vectors)
+    if polariser is not None:
+        behind *= 0.5
+    total = behind.copy() if cover > 0.0 else behind
     for sheet in sheets:
         for source, scatterer in zip(sources, sheet.scatterers, strict=True):
             amount = sheet.amount(elevation, source)[..., None]
@@ -118,8 +141,7 @@ def radiance(
             total += light
     if cover > 0.0:
         seen = _seen_past(directions, rows, sources[0], cover)
-        dark = COVER_LIGHT * behind if polariser is None else 0.5 * COVER_LIGHT * behind
-        total = total * seen[..., None] + ((1.0 - seen) * dark)[..., None]
+        total = total * seen[..., None] + (1.0 - seen)[..., None] * (COVER_LIGHT * behind)
     return total
 
 
@@ -135,13 +157,15 @@ def stokes(
     rows: slice,
     sources: Sequence[Source],
     sheets: Sequence[Sheet],
-    background: Background,
+    background: Behind,
     cover: float = 0.0,
 ) -> FloatArray:
     """Return the Stokes vector of radiance, shape (ny, nx, nλ, 4), in each direction's meridian frame."""
-    _, elevation = azimuth_elevation(directions.vectors(rows))
+    vectors = directions.vectors(rows)
+    _, elevation = azimuth_elevation(vectors)
     total = np.zeros((*elevation.shape, len(sources[0].irradiance), 4))
-    total[..., 0] = background.at(elevation)[..., None]
+    behind = background.radiance(vectors)
+    total[..., 0] = behind
     for sheet in sheets:
         for source, scatterer in zip(sources, sheet.scatterers, strict=True):
             amount = sheet.amount(elevation, source)[..., None, None]
@@ -149,5 +173,5 @@ def stokes(
     if cover > 0.0:
         seen = _seen_past(directions, rows, sources[0], cover)
         total *= seen[..., None, None]
-        total[..., 0] += ((1.0 - seen) * COVER_LIGHT * background.at(elevation))[..., None]
+        total[..., 0] += (1.0 - seen)[..., None] * (COVER_LIGHT * behind)
     return total

@@ -5,9 +5,10 @@ import pytest
 
 from skyoptics.crystals.habits import Habit, shape
 from skyoptics.crystals.orientations import Orientation
+from skyoptics.crystals.prepared import prepare
 from skyoptics.crystals.shapes import hexagonal_prism
 from skyoptics.crystals.sorting import sorter
-from skyoptics.crystals.tracing import coarse_shape, prepare, trace_angles, trace_exits, trace_groups, trace_plane
+from skyoptics.crystals.tracing import coarse_shape, trace_angles, trace_exits, trace_groups, trace_plane
 from skyoptics.errors import DomainError
 from skyoptics.geometry.axes import direction
 from skyoptics.geometry.directions import Directions

@@ -9,6 +9,7 @@ from skyoptics.camera.frame import aim, photograph
 from skyoptics.crystals import guide as guides
 from skyoptics.crystals import tracing
 from skyoptics.crystals.orientations import Orientation
+from skyoptics.crystals.prepared import prepare
 from skyoptics.crystals.shapes import hexagonal_prism
 from skyoptics.errors import DomainError
 from skyoptics.geometry.axes import direction
@@ -41,7 +42,7 @@ def prepared(name, edges=(500e-9, 520e-9), **options):
     aspect, law, tilt, height = FRAMES[name][:4]
     options = {"radius": RADIUS, "size": 1e-4, "spectral_bin": 3} | options
     shape, towards = hexagonal_prism(aspect), direction(np.pi, height * DEG)
-    return tracing.prepare(shape, Orientation(law, tilt * DEG), ice(), edges, towards, **options)
+    return prepare(shape, Orientation(law, tilt * DEG), ice(), edges, towards, **options)
 
 
 @cache

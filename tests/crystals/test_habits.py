@@ -8,6 +8,7 @@ from skyoptics.crystals import tracing
 from skyoptics.crystals.faces import LATTICE_RATIO, LOWER_PYRAMID, UPPER_PYRAMID, face_labels, face_normal
 from skyoptics.crystals.habits import NAMES, Habit, describe, ensemble, pyramid_rise, shape
 from skyoptics.crystals.orientations import Orientation
+from skyoptics.crystals.prepared import prepare
 from skyoptics.crystals.shapes import hexagonal_prism
 from skyoptics.errors import DomainError
 from skyoptics.geometry.directions import Directions
@@ -212,7 +213,7 @@ def test_faces_of_the_second_order_stand_above_the_edges():
 
 def exits(body, rays=2**17):
     law = Orientation("random")
-    item = tracing.prepare(body, law, lambda w: INDEX + 0 * w, (5.5e-7, 5.5e-7), np.array([0.0, 0.0, 1.0]))
+    item = prepare(body, law, lambda w: INDEX + 0 * w, (5.5e-7, 5.5e-7), np.array([0.0, 0.0, 1.0]))
     return tracing.trace_exits(item, 1, 0, rays)
 
 
@@ -264,7 +265,7 @@ def test_absent_faces_are_never_met_and_energy_is_kept(habit):
 def test_both_tracers_agree_on_crystals_with_absent_faces(habit):
     body, law = shape(habit), Orientation("column", 5.0 * DEG)
     grid = Directions.cylindrical((4, 6), np.eye(3), (np.pi / 2, -1.5 * np.pi), (np.pi / 2, -np.pi / 2)).packed()
-    item = tracing.prepare(body, law, lambda w: INDEX + 0 * w, (5.5e-7, 5.5e-7), np.array([0.6, 0.0, 0.8]))
+    item = prepare(body, law, lambda w: INDEX + 0 * w, (5.5e-7, 5.5e-7), np.array([0.6, 0.0, 0.8]))
     around = hexagonal_prism(2.5)  # the plain loop shoots at the sphere around it and takes the faces from `item`
     lanes, plain = [], []
     for batch in range(8):

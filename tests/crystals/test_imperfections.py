@@ -6,18 +6,10 @@ from scipy.special import j0, j1
 from scipy.stats import kstest
 
 from skyoptics.crystals.orientations import Orientation, projected_area, read_tilts
+from skyoptics.crystals.prepared import IDEAL, Imperfections, prepare, ring_table
 from skyoptics.crystals.shapes import hexagonal_prism
 from skyoptics.crystals.sorting import sorter
-from skyoptics.crystals.tracing import (
-    IDEAL,
-    Imperfections,
-    Incoming,
-    prepare,
-    ring_table,
-    trace_angles,
-    trace_exits,
-    trace_plane,
-)
+from skyoptics.crystals.tracing import Incoming, trace_angles, trace_exits, trace_plane
 from skyoptics.errors import DataFileError, DomainError
 from skyoptics.geometry.axes import direction
 from skyoptics.geometry.directions import Directions

@@ -7,8 +7,9 @@ from scipy.stats import chi2
 from skyoptics.crystals import tracing
 from skyoptics.crystals.layer import PLANES, Layer, LayerKind, extinction_at, extinction_table, layer_kind, trace_layer
 from skyoptics.crystals.orientations import LAWS, Orientation, relative_extinction
+from skyoptics.crystals.prepared import Guide, prepare
 from skyoptics.crystals.shapes import hexagonal_prism
-from skyoptics.crystals.tracing import ExitList, Guide, Tally
+from skyoptics.crystals.tracing import ExitList, Tally
 from skyoptics.errors import DomainError
 from skyoptics.geometry.axes import direction
 from skyoptics.geometry.directions import Directions
@@ -23,7 +24,7 @@ RAYS = 2**14
 
 def prepared(aspect=1.0, law=RANDOM, elevation_deg=20.0, index=lambda w: 1.31 + 0.0 * w, **options):
     towards = direction(0.0, elevation_deg * DEG)
-    return tracing.prepare(hexagonal_prism(aspect), law, index, GREEN, towards, **options)
+    return prepare(hexagonal_prism(aspect), law, index, GREEN, towards, **options)
 
 
 def kind(aspect=1.0, law=RANDOM, share=1.0, **options):
@@ -421,7 +422,7 @@ def test_several_shapes_and_a_disc():
     """Every shape of a kind meets the same light; a sun of some size is weakened ray by ray."""
     shapes = [hexagonal_prism(aspect) for aspect in (0.2, 1.0, 5.0)]
     law = Orientation("column", 1.0 * DEG)
-    item = tracing.prepare(shapes, law, lambda w: 1.31 + 0.0 * w, GREEN, direction(0.0, 4 * DEG), radius=0.05)
+    item = prepare(shapes, law, lambda w: 1.31 + 0.0 * w, GREEN, direction(0.0, 4 * DEG), radius=0.05)
     cloud = Layer((layer_kind([item], shapes, law),), 1.0)
     _, tallies = traced(cloud, 6, 192 * 40)
     assert tallies[0].traced % 192 == 0

@@ -5,8 +5,9 @@ import pytest
 
 from skyoptics.crystals.mueller import phase_matrix
 from skyoptics.crystals.orientations import Orientation
+from skyoptics.crystals.prepared import prepare
 from skyoptics.crystals.shapes import hexagonal_prism
-from skyoptics.crystals.tracing import prepare, trace_plane
+from skyoptics.crystals.tracing import trace_plane
 from skyoptics.geometry.axes import azimuth_elevation, direction
 from skyoptics.geometry.directions import Directions
 from skyoptics.units import DEG

@@ -12,9 +12,10 @@ from skyoptics.crystals.arc_groups import candidates
 from skyoptics.crystals.faces import face_normal
 from skyoptics.crystals.habits import Habit, shape
 from skyoptics.crystals.orientations import Orientation
+from skyoptics.crystals.prepared import prepare
 from skyoptics.crystals.shapes import hexagonal_prism
 from skyoptics.crystals.sorting import OTHER, Sorter, describe, sort_codes, sorter
-from skyoptics.crystals.tracing import prepare, trace_exits
+from skyoptics.crystals.tracing import trace_exits
 from skyoptics.geometry.axes import direction
 from skyoptics.kernels.lanes import LONGER, path_faces
 from skyoptics.units import DEG

@@ -8,6 +8,7 @@ from scipy.stats import chisquare, kstest
 
 from skyoptics.crystals import tracing
 from skyoptics.crystals.orientations import LAWS, Orientation, projected_area
+from skyoptics.crystals.prepared import prepare
 from skyoptics.crystals.shapes import hexagonal_prism
 from skyoptics.errors import DomainError
 from skyoptics.geometry.axes import direction
@@ -31,7 +32,7 @@ def index(wavelength):
 
 def prepared(aspect=1.0, law=RANDOM, elevation_deg=20.0, **options):
     towards = direction(0.0, elevation_deg * DEG)
-    return tracing.prepare(hexagonal_prism(aspect), law, options.pop("index", index), GREEN, towards, **options)
+    return prepare(hexagonal_prism(aspect), law, options.pop("index", index), GREEN, towards, **options)
 
 
 def sky(shape=(90, 180)):
@@ -260,9 +261,10 @@ _SCRIPT = """
 import sys, numpy as np
 from skyoptics.crystals import tracing
 from skyoptics.crystals.orientations import Orientation
+from skyoptics.crystals.prepared import prepare
 from skyoptics.crystals.shapes import hexagonal_prism
 from skyoptics.geometry.axes import direction
-item = tracing.prepare(hexagonal_prism(0.8), Orientation("random"), lambda w: 1.31 + 1e-5j + 0 * w, (5e-7, 6e-7),
+item = prepare(hexagonal_prism(0.8), Orientation("random"), lambda w: 1.31 + 1e-5j + 0 * w, (5e-7, 6e-7),
                        direction(0.2, 0.5), radius=0.005, size=1e-5, stokes=(1.0, 0.3, 0.2, 0.1))
 exits, _ = tracing.trace_exits(item, 4, 0, int(sys.argv[2]))
 np.savez(sys.argv[1], ray=exits.ray, path=exits.path, hits=exits.hits, direction=exits.direction, stokes=exits.stokes)

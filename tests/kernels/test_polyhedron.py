@@ -8,8 +8,8 @@ import numpy as np
 import pytest
 
 from skyoptics.crystals.orientations import Orientation
+from skyoptics.crystals.prepared import prepare
 from skyoptics.crystals.shapes import hexagonal_prism
-from skyoptics.crystals.tracing import prepare
 from skyoptics.geometry.axes import direction
 from skyoptics.kernels import entry, polyhedron, sobol
 from skyoptics.kernels import lanes as L
