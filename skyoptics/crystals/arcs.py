@@ -40,6 +40,7 @@ SHORTEST = 0.5 * DEG
 _SPINS = 3
 _BEADS = 300
 _HOLE = 12
+_REPEAT = 50
 
 
 def names() -> tuple[str, ...]:
@@ -198,7 +199,8 @@ def _lit_views(entry: Feature, sun_elevation: float, index: float) -> list[Float
     views: list[FloatArray] = []
     for branch, light in found:
         lit = _closed_holes(light > FAINTEST * brightest) & in_part(entry.part, branch.view, sun_elevation)
-        for piece in runs(branch.view, branch.angles, lit & _closed_holes(_is_new(branch.view, views))):
+        fresh = _closed_holes(_is_new(branch.view, views)) & _closed_holes(_first_time(branch.view, lit))
+        for piece in runs(branch.view, branch.angles, lit & fresh):
             if np.linalg.norm(np.diff(piece.view, axis=0), axis=1).sum() >= SHORTEST:
                 views.append(piece.view)
     # sun and crystals are alike on both sides of the sun's vertical; rounding in `brightness` is not
@@ -232,6 +234,19 @@ def _is_new(view: FloatArray, drawn: list[FloatArray]) -> BoolArray:
     near = np.cos(0.6 * STEP)
     known = np.concatenate(drawn).T
     return np.concatenate([(part @ known).max(axis=1) < near for part in np.array_split(view, 1 + len(view) // 1000)])
+
+
+def _first_time(view: FloatArray, lit: BoolArray) -> BoolArray:
+    """Return which points of a branch do not repeat lit ones before them: a mirror that turns once draws a circle twice."""
+    near = np.cos(0.6 * STEP)
+    result = np.ones(len(view), dtype=bool)
+    for start in range(_REPEAT, len(view), 512):
+        part = view[start : start + 512]
+        place = np.arange(start, start + len(part))[:, None]
+        earlier = (np.arange(start + len(part) - _REPEAT)[None] <= place - _REPEAT) & lit[: start + len(part) - _REPEAT]
+        close = part @ view[: start + len(part) - _REPEAT].T > near
+        result[start : start + len(part)] = ~np.any(close & earlier, axis=1)
+    return result
 
 
 def _light(

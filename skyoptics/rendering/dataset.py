@@ -11,7 +11,8 @@ import numpy as np
 from skyoptics.colour.images import replacing
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.optics.polarisation import degree_of_linear_polarisation
-from skyoptics.rendering.run import Result, blocks, look
+from skyoptics.rendering.memory import blocks
+from skyoptics.rendering.run import Result, look
 from skyoptics.sky.compose import stokes
 from skyoptics.units import DEG, NM
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+
 from skyoptics.errors import ResourceError
 from skyoptics.rendering.build import DropSheet, Job
 from skyoptics.rendering.clouds import CrystalSheet
@@ -87,3 +89,10 @@ def check(need: int) -> None:
             f"{SHARE:.0%} of that may be taken: make the picture smaller (camera.width_px), take fewer wavelengths "
             "(picture.bin_nm), or leave out --data"
         )
+
+
+def blocks(shape: tuple[int, int]) -> Iterator[slice]:
+    """Yield slices of rows that hold about `BLOCK` pixels each, the same for any number of threads."""
+    step = max(1, BLOCK // shape[1])
+    for start in range(0, shape[0], step):
+        yield slice(start, min(start + step, shape[0]))
