@@ -231,9 +231,9 @@ def trace_layer(
         If a number is out of range, or the source stands exactly on the horizon of a flat earth.
     """
     prepared = [kind.prepared[spectral_bin] for kind in layer.kinds]
-    frame = prepared[0].arguments[4]
+    frame = prepared[0].arguments.frame
     sun = float(frame[8])
-    if any(not np.array_equal(each.arguments[4], frame) for each in prepared[1:]):
+    if any(not np.array_equal(each.arguments.frame, frame) for each in prepared[1:]):
         raise DomainError("all kinds of a layer are prepared under the same source")
     if not (1 <= orders <= MAXIMUM_ORDERS and 0 < rays <= MAXIMUM_RAYS and stokes_count in (1, 4)):
         raise DomainError(f"orders are 1 to {MAXIMUM_ORDERS}, rays 1 to {MAXIMUM_RAYS}, Stokes components 1 or 4")

@@ -13,8 +13,6 @@ from skyoptics.units import FloatArray
 
 STATES = ((1.0, 0.0, 0.0, 0.0), (1.0, 1.0, 0.0, 0.0), (1.0, 0.0, 1.0, 0.0), (1.0, 0.0, 0.0, 1.0))
 """Incident Stokes vectors: unpolarised, vertical, diagonal, circular."""
-_STOKES = 7
-"""Place of the incident Stokes vector among a kernel's arguments."""
 
 
 def phase_matrix(
@@ -50,9 +48,8 @@ def phase_matrix(
     found = np.empty((batches, *directions.shape, 4, 4))
     for batch in range(batches):
         for column, state in enumerate(STATES):
-            arguments = list(prepared.arguments)
-            arguments[_STOKES] = np.array(state, dtype=np.float32)
-            lit = replace(prepared, arguments=tuple(arguments))
+            arguments = prepared.arguments._replace(stokes=np.array(state, dtype=np.float32))
+            lit = replace(prepared, arguments=arguments)
             plane, _ = trace_plane(lit, packed, seed, batch, rays, 4, np.float64)
             found[batch, ..., column] = plane * factor[..., None]
         found[batch, ..., 1:] -= found[batch, ..., :1]

@@ -7,11 +7,11 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 
-from skyoptics.crystals.orientations import Orientation, projected_area
+from skyoptics.crystals.orientations import Orientation, relative_extinction
 from skyoptics.crystals.shapes import Shape
 from skyoptics.crystals.sorting import Sorter
 from skyoptics.errors import DomainError
@@ -103,13 +103,31 @@ class Imperfections:
 IDEAL = Imperfections()
 
 
+class Arguments(NamedTuple):
+    """What `skyoptics.kernels.crystal.trace_crystals` takes beside a body, in its order."""
+
+    settings: Float32Array
+    law: int
+    pose: Float32Array
+    tilts: Float32Array
+    frame: Float32Array
+    disc: Float32Array
+    indices: Float32Array
+    stokes: Float32Array
+    pattern: Float32Array
+    step: Any
+    table: Any
+    outside: Any
+    settled: Any
+
+
 @dataclass(frozen=True, eq=False)
 class Prepared:
     """Kernel arguments of one kind of crystal in one spectral bin under one source; made by `prepare`."""
 
     bodies: tuple[tuple[Float32Array, Float32Array], ...]
     """Slabs and patches of each shape of the kind."""
-    arguments: tuple[Any, ...]
+    arguments: Arguments
     used: int
     spectral_bin: int
     mean_incident: float
@@ -193,8 +211,7 @@ def prepare(
     frame = np.concatenate([level, np.cross(towards, level), towards])
     shapes = (shape,) if isinstance(shape, Shape) else tuple(shape)
     reference = float(np.mean([each.mean_projected_area for each in shapes]))
-    areas = [float(projected_area(each, orientation, towards[2])) for each in shapes]
-    mean_incident = float(np.mean(areas)) / reference
+    mean_incident = float(relative_extinction(shapes, orientation, towards[2]))
     if imperfections.diffraction and size == 0.0:
         raise DomainError("diffraction needs the size of the crystals")
     aperture = size * np.sqrt(reference / np.pi)
@@ -211,7 +228,7 @@ def prepare(
     assert len(settings) == SETTINGS
     if sorter is not None and any(len(sorter.outside) != 2 * len(each.normals) for each in shapes):
         raise DomainError("the sorter belongs to a crystal with other faces")
-    arguments = (
+    arguments = Arguments(
         np.array(settings, dtype=np.float32),
         orientation.law,
         orientation.pose(),

@@ -9,6 +9,7 @@ from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass, replace
 from functools import partial
+from typing import NamedTuple
 
 import numpy as np
 
@@ -138,7 +139,8 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
     """
     bins = spectral_bins(scene)
     with _blame(where, "light"):
-        sources = _sources(scene, bins)
+        seen = placed(scene.light)
+        sources = _sources(scene, seen, bins)
     sheets: list[DropSheet | CrystalSheet] = []
     crystals: list[tuple[int, CrystalSheet]] = []
     for number, particles in enumerate(scene.air, start=1):
@@ -161,7 +163,7 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
     for (place, _), sheet in zip(crystals, hung, strict=True):
         sheets[place] = sheet
     with _blame(where, "picture"):
-        background = _behind(scene, bins, sources[0])
+        background = _behind(scene, seen, bins, sources[0])
     with _blame(where, "camera"):
         directions = _directions(scene, sources[0])
     return Job(
@@ -190,9 +192,9 @@ def spectral_bins(scene: Scene) -> Bins:
     return Bins.adjoining(np.array(DEFAULT_EDGES_NM) * NM)
 
 
-def _sources(scene: Scene, bins: Bins) -> tuple[Source, ...]:
+def _sources(scene: Scene, seen: Placed, bins: Bins) -> tuple[Source, ...]:
     light = scene.light
-    elevation, azimuth, phase_angle, radius = placed(light)
+    elevation, azimuth, phase_angle, radius = seen
     air = _air(light) if light.attenuation == "air" else None
     disc = light.disc != "point"
     if light.body == "moon":
@@ -222,7 +224,7 @@ def _air(light: Light) -> Air:
     )
 
 
-def _behind(scene: Scene, bins: Bins, source: Source) -> Behind:
+def _behind(scene: Scene, seen: Placed, bins: Bins, source: Source) -> Behind:
     """Return what lies behind the particles."""
     picture = scene.picture
     if picture.sky == "plain":
@@ -230,7 +232,7 @@ def _behind(scene: Scene, bins: Bins, source: Source) -> Behind:
     from skyoptics.sky.clear import ClearSky
     from skyoptics.sky.overcast import StandardSky
 
-    above = moonlight(placed(scene.light)[2]) if scene.light.body == "moon" else None
+    above = moonlight(seen.phase_angle) if scene.light.body == "moon" else None
     clear = ClearSky(bins, source.direction, _air(scene.light), picture.ground, above)
     if picture.sky == "clear":
         return clear
@@ -238,8 +240,17 @@ def _behind(scene: Scene, bins: Bins, source: Source) -> Behind:
     return StandardSky.cloud(1, source.direction, falling, picture.cloud_depth, picture.ground)
 
 
-def placed(light: Light) -> tuple[float, float, float, float | None]:
-    """Return apparent elevation, azimuth, the moon's phase angle and the disc's radius [rad], the last None for the mean.
+class Placed(NamedTuple):
+    """Where the sun or the moon is seen [rad]; radius None for the mean one."""
+
+    elevation: float
+    azimuth: float
+    phase_angle: float
+    radius: float | None
+
+
+def placed(light: Light) -> Placed:
+    """Return where the body of a light is seen.
 
     Raises
     ------
@@ -248,7 +259,7 @@ def placed(light: Light) -> tuple[float, float, float, float | None]:
     """
     if light.elevation is not None:
         assert light.azimuth is not None
-        return light.elevation, light.azimuth, light.phase_angle, None
+        return Placed(light.elevation, light.azimuth, light.phase_angle, None)
     from skyoptics.light import position, rising
 
     assert light.latitude_deg is not None
@@ -266,7 +277,7 @@ def placed(light: Light) -> tuple[float, float, float, float | None]:
     if seen.elevation_deg * DEG < MINIMUM_ELEVATION:
         raise DomainError(rising.describe(light.body, *where))
     phase = getattr(seen, "phase_angle_deg", 0.0)
-    return seen.elevation_deg * DEG, seen.azimuth_deg * DEG, phase * DEG, seen.angular_radius_deg * DEG
+    return Placed(seen.elevation_deg * DEG, seen.azimuth_deg * DEG, phase * DEG, seen.angular_radius_deg * DEG)
 
 
 def _index(particles: Drops | Crystals, medium: str) -> material.RefractiveIndex:

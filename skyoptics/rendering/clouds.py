@@ -3,16 +3,18 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 from functools import partial
+from typing import Any
 
 import numpy as np
 
 from skyoptics.crystals import habits
 from skyoptics.crystals.layer import extinction_at, extinction_table
 from skyoptics.crystals.orientations import Orientation, read_tilts, relative_extinction
-from skyoptics.crystals.prepared import IDEAL, Imperfections
+from skyoptics.crystals.prepared import IDEAL, Guide, Imperfections, Prepared, prepare
 from skyoptics.crystals.shapes import Shape
+from skyoptics.crystals.sorting import Sorter
 from skyoptics.errors import DomainError
 from skyoptics.materials import index as material
 from skyoptics.optics.source import Source
@@ -78,18 +80,46 @@ class CrystalSheet:
         """Return extinction towards a direction ÷ the reference."""
         return relative_extinction(self.shapes, self.orientation, cos_zenith)
 
+    def prepared(
+        self,
+        source: Source,
+        row: int,
+        edges: FloatArray,
+        spectral_bin: int,
+        guide: Guide | None = None,
+        sorter: Sorter | None = None,
+    ) -> Prepared:
+        """Return what the batches of one spectral bin, row `row` of the source, have in common."""
+        return prepare(
+            self.shapes,
+            self.orientation,
+            self.index,
+            edges,
+            source.direction,
+            radius=source.disc.radius,
+            darkening=source.disc.darkening[row],
+            stokes=source.stokes[row],
+            size=self.diameter,
+            spectral_bin=spectral_bin,
+            guide=guide,
+            imperfections=self.imperfections,
+            sorter=sorter,
+        )
+
+
+def habit_of(asked: Any) -> habits.Habit:
+    """Return the kind of crystal asked for by an [[air]] table, or by the options of a curve: both name what a habit holds."""
+    given = {field.name: getattr(asked, field.name) for field in fields(habits.Habit) if field.name != "name"}
+    return habits.Habit(asked.shape, **given)
+
+
+def shapes_of(asked: Any) -> tuple[Shape, ...]:
+    """Return shapes that stand for the kind of crystal asked for and its spreads."""
+    return habits.ensemble(habit_of(asked), SHAPES, SHAPES_SEED)
+
 
 def crystal_sheet(particles: Crystals, name: str, index: material.RefractiveIndex) -> CrystalSheet:
     """Return the crystals of an [[air]] table; how much of them there is comes with `hang`."""
-    given = {key: getattr(particles, key) for key in ("aspect", "pyramid_upper", "pyramid_lower", "trigonality")}
-    habit = habits.Habit(
-        particles.shape,
-        miller=particles.miller,
-        face_distances=particles.face_distances,
-        aspect_spread=particles.aspect_spread,
-        distance_spread=particles.distance_spread,
-        **{key: value for key, value in given.items() if value is not None},
-    )
     orientation = Orientation(
         particles.orientation,
         particles.tilt,
@@ -106,7 +136,7 @@ def crystal_sheet(particles: Crystals, name: str, index: material.RefractiveInde
     return CrystalSheet(
         name,
         index,
-        habits.ensemble(habit, SHAPES, SHAPES_SEED),
+        shapes_of(particles),
         orientation,
         particles.diameter,
         partial(curtain_amount, optical_depth=0.0, below_horizon=False),

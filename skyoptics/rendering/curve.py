@@ -15,7 +15,7 @@ from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager
 from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import numpy as np
 
@@ -28,9 +28,6 @@ from skyoptics.optics.table import ScatteringTable
 from skyoptics.rendering.run import usable_cores
 from skyoptics.rendering.scatter import ICE_INDEX, QUALITY, Progress, silent
 from skyoptics.units import CELSIUS_ZERO, DEG, NM, UM, FloatArray
-
-if TYPE_CHECKING:
-    from skyoptics.crystals.habits import Habit
 
 COLUMNS = ("wavelength_nm", "angle_deg", "intensity", "polarization", "intensity_error", "index")
 
@@ -195,7 +192,7 @@ def crystal(asked: CrystalCurve, progress: Progress = silent) -> Curve:
     from skyoptics.crystals import table as tables
     from skyoptics.crystals.prepared import Imperfections
     from skyoptics.crystals.sorting import sorter
-    from skyoptics.rendering.clouds import BIREFRINGENCE, SHAPES, SHAPES_SEED
+    from skyoptics.rendering.clouds import BIREFRINGENCE, shapes_of
 
     bins = Bins.lines(np.array(asked.wavelength_nm) * NM)
     law = material.constant(asked.index) if asked.index is not None else material.ice(asked.medium)
@@ -210,7 +207,7 @@ def crystal(asked: CrystalCurve, progress: Progress = silent) -> Curve:
         if asked.index is not None:
             raise DomainError("--birefringence is that of ice; beside --index take --extraordinary-index")
         split, law = BIREFRINGENCE, material.shifted(law, -BIREFRINGENCE / 3.0)
-    shapes = habits.ensemble(habit(asked), SHAPES, SHAPES_SEED)
+    shapes = shapes_of(asked)
     with _threads(asked.threads) as executor:
         whole = tables.scattering_table(
             shapes,
@@ -237,30 +234,14 @@ def draw(asked: CrystalCurve, path: Path, say: Callable[[str], Any]) -> None:
     """Draw the crystal asked for into a PNG or SVG file, and say what it is."""
     from skyoptics.crystals import habits
     from skyoptics.figures.crystal import draw as draw_crystal
+    from skyoptics.rendering.clouds import habit_of
 
     if path.suffix.lower() not in (".png", ".svg"):
         raise DomainError(f"a drawing is a .png or .svg file; got {path.name}")
-    kind = habit(asked)
-    shape = habits.shape(kind)
+    shape = habits.shape(habit_of(asked))
     draw_crystal(shape, path, title=shape.label)
     about = ", ".join(f"{name.replace('_', ' ')} {value:.6g}" for name, value in habits.describe(shape).items())
     say(f"{path}: {shape.label}; in units of the diameter across corners: {about}")
-
-
-def habit(asked: CrystalCurve) -> Habit:
-    """Return the kind of crystal asked for."""
-    from skyoptics.crystals.habits import Habit
-
-    names = ("aspect", "pyramid_upper", "pyramid_lower", "trigonality")
-    given = {name: getattr(asked, name) for name in names if getattr(asked, name) is not None}
-    return Habit(
-        asked.shape,
-        miller=asked.miller,
-        face_distances=asked.face_distances,
-        aspect_spread=asked.aspect_spread,
-        distance_spread=asked.distance_spread,
-        **given,
-    )
 
 
 @contextmanager

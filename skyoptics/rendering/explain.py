@@ -6,7 +6,6 @@ path what it is. Tables of randomly oriented crystals know their named halos alr
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import replace
 from typing import Any
@@ -16,11 +15,10 @@ import numpy as np
 from skyoptics.camera import frame
 from skyoptics.colour.observer import weights
 from skyoptics.crystals.arcs import feature
-from skyoptics.crystals.faces import face_labels
+from skyoptics.crystals.sorting import Sorter, describe
 from skyoptics.crystals.tracing import ExitList, trace_exits
 from skyoptics.geometry.axes import angle_between, azimuth_elevation, direction
 from skyoptics.geometry.directions import Directions
-from skyoptics.kernels.lanes import path_faces
 from skyoptics.optics.batches import in_order
 from skyoptics.rendering import expose, further
 from skyoptics.rendering.build import DropSheet, Job, build
@@ -180,25 +178,23 @@ def _arrived(
                 paths[group, code] = paths.get((group, code), 0.0) + value
         batches += ahead
         progress(f"tracing {work.sheet.name}", int(min(sums[:, 1].sum(), 1e9)), int(min(wanted, 1e9)))
-    labels = face_labels(work.sheet.shapes[0].face_normals)
     result = []
     for group, name in enumerate(names):
         seen, arrived = sums[group]
         if arrived == 0.0:
             continue
         own = {code: value for (other, code), value in paths.items() if other == group}
-        best = sorted(_by_faces(own, lambda face: labels[face]).items(), key=lambda item: -item[1])[:PATHS]
+        best = sorted(_by_faces(own, work.sorter).items(), key=lambda item: -item[1])[:PATHS]
         listed = [{"faces": faces, "part": value / seen} for faces, value in best]
         result.append(_entry(name, work.sheet.name, seen / batches, seen / batches / np.sqrt(arrived), listed))
     return result
 
 
-def _by_faces(paths: dict[int, float], label: Callable[[int], int]) -> dict[str, float]:
+def _by_faces(paths: dict[int, float], arcs: Sorter) -> dict[str, float]:
     """Return power by the numbers of the faces met, as in ``3-5``."""
     result: dict[str, float] = {}
     for code, value in paths.items():
-        faces = path_faces(code)
-        words = "more than 12 faces" if faces is None else "-".join(str(label(face)) for face in faces)
+        words = describe(arcs, code)
         result[words] = result.get(words, 0.0) + value
     return result
 

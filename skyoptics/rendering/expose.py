@@ -21,7 +21,7 @@ from skyoptics.colour.display import exposure_scale, roll_off
 from skyoptics.colour.observer import weights
 from skyoptics.crystals import guide
 from skyoptics.crystals.orientations import relative_extinction
-from skyoptics.crystals.prepared import Guide, Prepared, prepare
+from skyoptics.crystals.prepared import Guide, Prepared
 from skyoptics.crystals.sorting import Sorter, sorter
 from skyoptics.crystals.tracing import coarse_shape, trace_groups, trace_plane
 from skyoptics.geometry.axes import azimuth_elevation
@@ -154,7 +154,7 @@ def begin(
     multiple = max(256, len(sheet.shapes) * (2 * TURN if sheet.imperfections.birefringence else CHUNK))
     rays = rays_by_bin(bins, grid.shape[0] * grid.shape[1], multiple)
     arcs = sorter_of(sheet, source)
-    side = -(-max(grid.shape) // GROUP_CELLS)
+    side = group_side(grid.shape)
     particles: dict[str, Any] = {
         **crystal_identity(sheet),
         "index": sheet.index.key,
@@ -181,21 +181,7 @@ def begin(
         reference = np.ones(len(bins))
 
     def ready(row: int, edges: FloatArray, found: Guide | None = None) -> Prepared:
-        return prepare(
-            sheet.shapes,
-            sheet.orientation,
-            sheet.index,
-            edges,
-            source.direction,
-            radius=source.disc.radius,
-            darkening=source.disc.darkening[row],
-            stokes=source.stokes[row],
-            size=sheet.diameter,
-            spectral_bin=row,
-            guide=found,
-            imperfections=sheet.imperfections,
-            sorter=arcs,
-        )
+        return sheet.prepared(source, row, edges, row, found, arcs)
 
     def all_bins() -> tuple[Prepared, ...]:
         span = np.array([bins.edges.min(), bins.edges.max()])
@@ -209,6 +195,11 @@ def begin(
     number = arcs.names.index(only) if only in arcs.names else NO_NAME
     found = films.find(Film.blank(key, rays, reference, shape))
     return Work(sheet, source, found, all_bins, packed, stream, arcs, 0, number)
+
+
+def group_side(shape: tuple[int, int]) -> int:
+    """Return the pixels along the side of a cell of named arcs, for a picture of rows and columns."""
+    return -(-max(shape) // GROUP_CELLS)
 
 
 def sorter_of(sheet: CrystalSheet, source: Source) -> Sorter:

@@ -14,7 +14,6 @@ from typing import Any
 import numpy as np
 
 from skyoptics.crystals.layer import Layer, LayerTally, layer_kind, trace_layer
-from skyoptics.crystals.prepared import prepare
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.geometry.directions import Directions
 from skyoptics.kernels import KERNEL_HASH
@@ -210,22 +209,8 @@ def _trace(
     depth = sum(sheet.optical_depth for sheet in slab)
     kinds = []
     for sheet in slab:
-        prepared = [
-            prepare(
-                sheet.shapes,
-                sheet.orientation,
-                sheet.index,
-                edges,
-                source.direction,
-                radius=source.disc.radius,
-                darkening=source.disc.darkening[row],
-                stokes=source.stokes[row],
-                size=sheet.diameter,
-                spectral_bin=0,  # the same random numbers in all bins: noise without colour
-                imperfections=sheet.imperfections,
-            )
-            for row, edges in enumerate(job.bins.edges)
-        ]
+        # the same random numbers in all bins: noise without colour
+        prepared = [sheet.prepared(source, row, edges, 0) for row, edges in enumerate(job.bins.edges)]
         kinds.append(layer_kind(prepared, sheet.shapes, sheet.orientation, sheet.optical_depth / depth))
     layer = Layer(tuple(kinds), depth, rim())
     orders = 2 if slab[0].scatterings == 2 else 64

@@ -13,8 +13,8 @@ from skyoptics.crystals.arcs import feature, locus
 from skyoptics.figures.annotated import Annotated, annotate
 from skyoptics.figures.placement import Label
 from skyoptics.geometry.axes import azimuth_elevation
-from skyoptics.rendering.expose import GROUP_CELLS
-from skyoptics.rendering.named import FURTHER, OTHER, binned, own_light
+from skyoptics.rendering.expose import group_side
+from skyoptics.rendering.named import FURTHER, OTHER, in_cells, own_light
 from skyoptics.rendering.run import Result
 from skyoptics.rendering.scatter import ICE_INDEX
 from skyoptics.units import FloatArray
@@ -39,15 +39,9 @@ def arc_labels(result: Result) -> list[Label]:
     from scipy.ndimage import uniform_filter
 
     job = result.job
-    side = -(-max(job.directions.shape) // GROUP_CELLS)
-    solid = binned(job.directions.solid_angle(), side)
-    flux = binned(result.xyz[..., 1].astype(np.float64) * job.directions.solid_angle(), side)
-    luminance = np.divide(flux, solid, out=np.zeros_like(flux), where=solid > 0.0)
-    _, elevation = azimuth_elevation(job.directions.vectors())
-    above = binned((elevation >= 0.0).astype(np.float64), side)
-    below = binned((elevation < 0.0).astype(np.float64), side)
-    whole = np.maximum(above, below) == side**2  # cells on the rim of the image or on the horizon mislead
-    luminance = np.where(whole, luminance, 0.0)
+    side = group_side(job.directions.shape)
+    luminance, whole = in_cells(job, result.xyz[..., 1], side)
+    luminance = np.where(whole == 1.0, luminance, 0.0)
     near = uniform_filter((luminance > 0.0).astype(np.float64), 2 * AROUND + 1)
     found: list[tuple[float, Label]] = []
     for name, light in own_light(job, result.parted, side).items():

@@ -17,7 +17,7 @@ from skyoptics.optics.table import ScatteringTable
 from skyoptics.rendering.build import Job
 from skyoptics.rendering.clouds import CrystalSheet
 from skyoptics.rendering.expose import Work
-from skyoptics.units import FloatArray
+from skyoptics.units import ArrayLike, FloatArray
 
 OTHER = "other"
 """Name of the light that belongs to no named arc."""
@@ -54,6 +54,35 @@ def binned(values: FloatArray, side: int) -> FloatArray:
     """Return sums of a picture's values (ny, nx) over the cells of the coarse grid; nan counts as 0."""
     rows = np.add.reduceat(np.nan_to_num(values), np.arange(0, values.shape[0], side), axis=0)
     return np.asarray(np.add.reduceat(rows, np.arange(0, values.shape[1], side), axis=1))
+
+
+def in_cells(job: Job, luminance: ArrayLike, side: int) -> tuple[FloatArray, FloatArray]:
+    """Return a picture's luminance on the coarse grid, and how much of each cell lies on one side of the horizon.
+
+    Parameters
+    ----------
+    job : Job
+        Grid.
+    luminance : array_like, shape (ny, nx)
+        [cd m⁻²]; nan outside the image.
+    side : int
+        Pixels along the side of a cell.
+
+    Returns
+    -------
+    luminance : ndarray, shape (rows, columns)
+        Mean over solid angle [cd m⁻²]; 0 outside the image.
+    whole : ndarray, shape (rows, columns)
+        Share of the cell's pixels on the side of the horizon where most of them are: below 1 on the horizon and on rims,
+        where own light misleads.
+    """
+    pixels = job.directions.solid_angle()
+    solid, flux = binned(pixels, side), binned(np.asarray(luminance, dtype=np.float64) * pixels, side)
+    mean = np.divide(flux, solid, out=np.zeros_like(flux), where=solid > 0.0)
+    _, elevation = azimuth_elevation(job.directions.vectors())
+    above = binned((elevation >= 0.0).astype(np.float64), side)
+    below = binned((elevation < 0.0).astype(np.float64), side)
+    return mean, np.maximum(above, below) / side**2
 
 
 def own_light(job: Job, parted: Sequence[Parted], side: int) -> dict[str, FloatArray]:

@@ -26,9 +26,9 @@ from skyoptics.crystals.arcs import feature
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.geometry.directions import Directions
 from skyoptics.rendering.build import Job
-from skyoptics.rendering.expose import GROUP_CELLS
+from skyoptics.rendering.expose import group_side
 from skyoptics.rendering.features import Line, framed, lines, missing
-from skyoptics.rendering.named import FURTHER, OTHER, binned, own_light
+from skyoptics.rendering.named import FURTHER, OTHER, binned, in_cells, own_light
 from skyoptics.rendering.profiles import Measured, measure
 from skyoptics.rendering.run import Result
 from skyoptics.units import ARCMIN, DEG, ArrayLike, BoolArray, FloatArray
@@ -263,17 +263,12 @@ class _Cells:
     @classmethod
     def of(cls, result: Result) -> _Cells:
         job = result.job
-        side = -(-max(job.directions.shape) // GROUP_CELLS)
+        side = group_side(job.directions.shape)
+        luminance, whole = in_cells(job, result.xyz[..., 1], side)
         solid = binned(job.directions.solid_angle(), side)
-        flux = binned(result.xyz[..., 1].astype(np.float64) * job.directions.solid_angle(), side)
-        luminance = np.divide(flux, solid, out=np.zeros_like(flux), where=solid > 0.0)
-        _, elevation = azimuth_elevation(job.directions.vectors())
-        above = binned((elevation >= 0.0).astype(np.float64), side)
-        below = binned((elevation < 0.0).astype(np.float64), side)
-        full = np.maximum(above, below)
         own = own_light(job, result.parted, side)
         cell = float(np.sqrt(np.median(solid[solid > 0.0])))
-        return cls(job.directions.coarse(side), luminance, own, full >= 0.99 * side**2, cell)
+        return cls(job.directions.coarse(side), luminance, own, whole >= 0.99, cell)
 
     def faint(self) -> dict[str, float]:
         """Return the names whose light is in the picture, but nowhere above `FAINT`, with their largest share."""

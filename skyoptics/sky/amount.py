@@ -9,10 +9,9 @@ from __future__ import annotations
 
 import numpy as np
 
+from skyoptics.light.slant import EARTH_RADIUS
 from skyoptics.units import ArrayLike, FloatArray
 
-EARTH_RADIUS = 6.371e6
-"""Mean radius of the earth [m] (GRS 80 mean radius R1, rounded)."""
 LAYER_HEIGHT = 9.0e3
 """Height of a layer above the observer [m]: middle of the cirrus range; enters near the horizon only."""
 

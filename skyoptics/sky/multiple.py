@@ -22,7 +22,7 @@ from typing import Any
 import numpy as np
 
 from skyoptics.kernels import sky as kernels
-from skyoptics.sky.amount import EARTH_RADIUS
+from skyoptics.light.slant import EARTH_RADIUS
 from skyoptics.units import DEG, FloatArray
 
 LEVELS = 1e3 * np.array(

@@ -22,7 +22,8 @@ from collections.abc import Callable
 import numpy as np
 
 from skyoptics.errors import DomainError
-from skyoptics.sky.amount import EARTH_RADIUS, LAYER_HEIGHT
+from skyoptics.light.slant import EARTH_RADIUS
+from skyoptics.sky.amount import LAYER_HEIGHT
 from skyoptics.units import ArrayLike, FloatArray
 
 EVENTS = 0.5
