@@ -24,6 +24,8 @@ UM = 1e-6
 """Micrometre [m]."""
 MM = 1e-3
 """Millimetre [m]."""
+KM = 1e3
+"""Kilometre [m]."""
 DEG = pi / 180.0
 """Degree [rad]."""
 ARCMIN = DEG / 60.0

@@ -20,6 +20,12 @@ COMMANDS = {
     "check": ("skyoptics.cli.check", "List every fault of scene files; render nothing."),
     "phase": ("skyoptics.cli.phase", "Scattering curve of one kind of particle."),
     "study": ("skyoptics.cli.study", "Sweep drop size: bow metrics, colours, tables, plots."),
+    "when": ("skyoptics.cli.when", "When a bow or halo can stand at a place, or meets a subject."),
+    "paths": ("skyoptics.cli.paths", "Draw the ways light takes through drops and crystals."),
+    "frame": ("skyoptics.cli.frame", "Where arcs fall in a lens's frame, and which lens holds them."),
+    "photo": ("skyoptics.cli.photo", "Arcs on a photograph; circles measured on it."),
+    "page": ("skyoptics.cli.page", "Pictures under a slider, with readings: one HTML file."),
+    "animate": ("skyoptics.cli.animate", "Film along a quantity: sun height, drop size, clock."),
     "scenes": ("skyoptics.cli.scenes", "List the example scenes, or write a copy of one."),
 }
 

@@ -6,6 +6,7 @@ option                used by
 --seed, --threads     render, phase
 --quality             render, phase
 --json                render, phase
+--lang                what writes words into pictures
 ====================  ==============
 """
 
@@ -21,6 +22,7 @@ from click.shell_completion import CompletionItem
 
 from skyoptics.cli import examples
 from skyoptics.errors import nearest
+from skyoptics.words.table import LANGUAGES
 
 Command = TypeVar("Command", bound=Callable[..., Any])
 QUALITIES = ("draft", "normal", "fine")
@@ -134,4 +136,11 @@ def sampling_options(function: Command) -> Command:
     return function
 
 
+lang_option = click.option(
+    "--lang",
+    type=Word(list(LANGUAGES)),
+    default="en",
+    show_default=True,
+    help="Language of labels, caption and alt text: " + ", ".join(f"{c} {name}" for c, name in LANGUAGES.items()) + ".",
+)
 json_option = click.option("--json", "as_json", is_flag=True, help="Print the report as JSON on stdout.")

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
 import click
 
-from skyoptics.cli.options import Between, NumberList, Word, json_option, sampling_options
+from skyoptics.cli.options import Between, Command, NumberList, Word, json_option, lang_option, sampling_options
 from skyoptics.errors import nearest
 
 KINDS = ("drop", "crystal")
@@ -48,6 +49,33 @@ MEDIUM = click.option(
     help="What the index of water or ice is relative to.",
 )
 DISC = click.option("--disc", is_flag=True, help="Average over the sun's disc.")
+LOOKS = ("scale", "polar", "colour_band", "by_part", "errors", "marks", "lang")
+
+
+def plot_options(part: str) -> Callable[[Command], Command]:
+    """Return what adds --plot and how it looks; `part` is what light is parted by."""
+
+    def add(function: Command) -> Command:
+        for option in (
+            lang_option,
+            click.option("--marks", is_flag=True, help="In the plot: mark closed-form angles of bows or halos."),
+            click.option("--errors", is_flag=True, help="In the plot: shade one standard error either side."),
+            click.option(f"--by-{part}", "by_part", is_flag=True, help=f"In the plot: a line for each {part}."),
+            click.option(
+                "--colour-band", is_flag=True, help="In the plot: the colour of each direction in sunlight, as seen."
+            ),
+            click.option("--polar", is_flag=True, help="In the plot: around the particle, light from the left."),
+            click.option(
+                "--scale", type=Word(["log", "linear"]), default="log", show_default=True, help="Of the plot."
+            ),
+            click.option("--plot", type=click.Path(path_type=Path), help="Draw the curve: .png, .svg or .pdf file."),
+        ):
+            function = option(function)
+        return function
+
+    return add
+
+
 CSV = click.option("--csv", type=click.Path(path_type=Path, allow_dash=True), help="File for the curve; - for stdout.")
 
 
@@ -75,16 +103,20 @@ CSV = click.option("--csv", type=click.Path(path_type=Path, allow_dash=True), he
 @STEP
 @DISC
 @CSV
+@plot_options("order")
 @json_option
 @sampling_options
 def drop(csv: Path | None, as_json: bool, **options: Any) -> None:
     """Scattering curve of a water drop.
 
+    \b
     Example: skyoptics phase drop --wavelength-nm 450,550,650 --orders 2,3 --step-deg 0.01 --csv bow.csv
-    """
+             skyoptics phase drop --by-order --marks --colour-band --plot curve.png
+    """  # noqa: D301
     from skyoptics.rendering import curve
 
-    _put_out(curve.drop, curve.DropCurve(**options), csv, as_json)
+    plot, look = _look(options)
+    _put_out(curve.drop, curve.DropCurve(**options), csv, as_json, plot, look)
 
 
 @command.command("crystal")
@@ -165,31 +197,49 @@ def drop(csv: Path | None, as_json: bool, **options: Any) -> None:
 @STEP
 @DISC
 @CSV
+@plot_options("halo")
 @json_option
 @sampling_options
 def crystal(csv: Path | None, as_json: bool, draw: Path | None, **options: Any) -> None:
-    r"""Scattering curve of ice crystals in random orientation, named halos apart; drawing of a crystal.
+    """Scattering curve of ice crystals in random orientation, named halos apart; drawing of a crystal.
 
     \b
     Example: skyoptics phase crystal --aspect 1.0 --wavelength-nm 550 --step-deg 0.05 --csv halo.csv
              skyoptics phase crystal --shape truncated-bipyramid --draw crystal.png
-    """
+    """  # noqa: D301
     from skyoptics.rendering import curve
 
+    plot, look = _look(options)
     asked = curve.CrystalCurve(**options)
     if draw is not None:
         curve.draw(asked, draw, click.echo)
-        if csv is None and not as_json:
+        if csv is None and plot is None and not as_json:
             return
-    _put_out(curve.crystal, asked, csv, as_json)
+    _put_out(curve.crystal, asked, csv, as_json, plot, look)
 
 
-def _put_out(work: Any, asked: Any, csv: Path | None, as_json: bool) -> None:
-    """Work out a curve under a progress bar and write it."""
+def _look(options: dict[str, Any]) -> tuple[Path | None, dict[str, Any]]:
+    """Take the options of the plot out of all options; without --plot they have no meaning and are refused."""
+    plot, look = options.pop("plot"), {name: options.pop(name) for name in LOOKS}
+    if plot is None and (any(look[name] for name in LOOKS[1:-1]) or look["scale"] != "log"):
+        raise click.UsageError("--scale, --polar, --colour-band, --by-…, --errors and --marks go with --plot FILE")
+    return plot, look
+
+
+def _put_out(work: Any, asked: Any, csv: Path | None, as_json: bool, plot: Path | None, look: dict[str, Any]) -> None:
+    """Work out a curve under a progress bar, write and draw it."""
     from skyoptics.cli import progress
+    from skyoptics.rendering import curve_plot
     from skyoptics.rendering.curve import put_out
+
+    if plot is not None:
+        curve_plot.check(plot, curve_plot.Look(**look), len(asked.wavelength_nm))
 
     progress.note_first_compilation()
     with progress.shown() as tell:
         found = work(asked, tell)
+    if plot is not None:
+        curve_plot.draw(found, plot, curve_plot.Look(**look))
     put_out(found, csv, as_json, click.echo)
+    if plot is not None and not as_json and str(csv) != "-":
+        click.echo(str(plot))

@@ -8,7 +8,7 @@ from typing import Any
 
 import click
 
-from skyoptics.cli.options import AzimuthElevation, SceneFile, Word, json_option, sampling_options
+from skyoptics.cli.options import AzimuthElevation, SceneFile, Word, json_option, lang_option, sampling_options
 
 
 @click.command("render", short_help="Scene file to picture and report.")
@@ -29,6 +29,7 @@ from skyoptics.cli.options import AzimuthElevation, SceneFile, Word, json_option
 )
 @click.option("--noise-map", is_flag=True, help="Write a map of the error of displayed lightness too.")
 @click.option("--labels", is_flag=True, help="Write an annotated copy too: arcs by name, horizon, compass, scale.")
+@lang_option
 @click.option(
     "--visibility", is_flag=True, help="Say whether each bow and halo will be seen, and the best angle of a polariser."
 )
@@ -42,6 +43,10 @@ from skyoptics.cli.options import AzimuthElevation, SceneFile, Word, json_option
     type=AzimuthElevation(),
     metavar="AZ,EL",
     help="Say what makes a direction bright, azimuth and elevation in degrees; renders nothing.",
+)
+@click.option("--vary", metavar="KEY=VALUES", help="One picture for each value, e.g. air.1.radius_um=10,50,250,1000.")
+@click.option(
+    "--sheet", "on_sheet", is_flag=True, help="All values of --vary on one comparison sheet, exposure and scale shared."
 )
 @json_option
 @sampling_options
@@ -57,21 +62,30 @@ def command(
     noise_map: bool,
     stokes: bool,
     labels: bool,
+    lang: str,
     visibility: bool,
     only: str | None,
     explain: tuple[float, float] | None,
+    vary: str | None,
+    on_sheet: bool,
     as_json: bool,
     quality: str,
     seed: int,
     threads: int | None,
 ) -> None:
-    r"""Render SCENE: a TOML file, or the name of an example scene (see: skyoptics scenes).
+    """Render SCENE: a TOML file, or the name of an example scene (see: skyoptics scenes).
 
     \b
     Example: skyoptics render double-bow --set light.elevation_deg=10 --quality draft
              skyoptics render mixed-whole-sky --only circumzenithal
              skyoptics render mixed-whole-sky --explain 180,42.5
-    """
+             skyoptics render double-bow --vary air.1.radius_um=10,50,250,1000 --sheet
+    """  # noqa: D301
+    if vary is not None or on_sheet:
+        from skyoptics.cli import varied
+
+        varied.run(click.get_current_context().params)
+        return
     if visibility and only is not None:
         raise click.UsageError("--visibility asks about the whole picture; leave --only out")
     from skyoptics.scene.files import safe_name
@@ -90,12 +104,16 @@ def command(
     if explain is not None:
         _explain(described, scene, explain, settings, as_json)
         return
-    wanted = output.Wanted(folder, name if only is None else f"{name}.{only}", data, extra, noise_map, labels)
+    wanted = output.Wanted(folder, name if only is None else f"{name}.{only}", data, extra, noise_map, labels, lang)
     if dry_run:
         _estimate(described, scene, settings, wanted, stokes, as_json)
         return
     if only is not None:
         told_apart(only)
+    if labels and described.title:
+        from skyoptics.figures.lettering import check_glyphs
+
+        check_glyphs(described.title)
     output.prepare(folder)
     progress.note_first_compilation()
     words = _command(scene, overrides, wanted, settings, stokes, only)
@@ -157,6 +175,7 @@ def _command(
         words += ["--only", only]
     flags = {"--data": wanted.data, "--stokes": stokes, "--noise-map": wanted.noise_map, "--labels": wanted.labels}
     words += [flag for flag, given in flags.items() if given]
+    words += ["--lang", wanted.lang] * (wanted.lang != "en")
     return words + [word for name in wanted.extra for word in ("--image", name)]
 
 

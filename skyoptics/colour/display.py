@@ -40,6 +40,9 @@ EXPOSURE_WITHOUT_LIGHT = 15.0
 
 SHOULDER_START = 0.6
 """Linear display value below which luminance is shown as it is [1]."""
+BLEACH_FROM, BLEACH_TO = 50.0, 5000.0
+"""Levels between which highlights lose their colour: what is so far over-exposed is white on film, on a sensor and to the eye
+(common practice, no source). No bow or halo comes near; the sun's disc goes beyond [1]."""
 
 _SKY = 0.26
 """Linear display value of the metered mean [1]; half a stop above middle grey, as a sky is usually exposed."""
@@ -235,7 +238,7 @@ def roll_off(value: ArrayLike) -> NDArray[Any]:
 
 
 def bend_highlights(linear: ArrayLike) -> NDArray[Any]:
-    """Return linear sRGB with highlights under the display's white and every chromaticity kept.
+    """Return linear sRGB with highlights under the display's white, chromaticity kept up to `BLEACH_FROM`.
 
     Parameters
     ----------
@@ -245,7 +248,7 @@ def bend_highlights(linear: ArrayLike) -> NDArray[Any]:
     Returns
     -------
     ndarray, shape (..., 3)
-        All three components times one factor, roll_off(level)/level [1].
+        All three components times one factor, roll_off(level)/level; beyond `BLEACH_FROM` on its way to white [1].
 
     Notes
     -----
@@ -258,6 +261,10 @@ def bend_highlights(linear: ArrayLike) -> NDArray[Any]:
     bent = roll_off(level)
     factor = np.divide(bent, level, out=np.ones_like(bent), where=level > SHOULDER_START)
     result: NDArray[Any] = linear * factor[..., None]
+    dazzling = level > BLEACH_FROM
+    if np.any(dazzling):
+        share = np.clip(np.log(level[dazzling] / BLEACH_FROM) / np.log(BLEACH_TO / BLEACH_FROM), 0.0, 1.0)[..., None]
+        result[dazzling] += share * (bent[dazzling][..., None] - result[dazzling])
     return result
 
 

@@ -27,6 +27,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from skyoptics.colour.display import encode
+from skyoptics.colour.metadata import WRITTEN_BY_HAND, XMP
 from skyoptics.errors import DomainError, ResourceError
 from skyoptics.units import ArrayLike, FloatArray
 
@@ -137,7 +138,8 @@ def write_tiff(path: str | os.PathLike[str], values: ArrayLike, *, text: Mapping
     values : array_like, shape (ny, nx) or (ny, nx, 3)
         Luminance, XYZ or linear RGB [any].
     text : mapping of str to str, optional
-        Written as JSON into the image description.
+        Written as JSON into the image description; ``Copyright`` into its own tag too, XMP (`metadata.XMP`) into its own
+        alone.
 
     Raises
     ------
@@ -151,13 +153,22 @@ def write_tiff(path: str | os.PathLike[str], values: ArrayLike, *, text: Mapping
         array = _picture(array)
     elif array.ndim != 2 or 0 in array.shape:
         raise DomainError(f"a TIFF needs shape (ny, nx) or (ny, nx, 3), got {array.shape}")
+    entries = dict(text or {})
+    packet = entries.pop(XMP, None)
+    tags: list[tuple[int, str, int, bytes, bool]] = []
+    if packet is not None:
+        tags.append((700, "B", len(packet.encode()), packet.encode(), True))
+    if "Copyright" in entries:
+        rights = entries["Copyright"].encode() + b"\0"
+        tags.append((33432, "s", len(rights), rights, True))
     with replacing(path) as temporary:
         tifffile.imwrite(
             temporary,
             array,
             photometric="rgb" if array.ndim == 3 else "minisblack",
             compression="zlib",
-            description=json.dumps(dict(text or {})),
+            description=json.dumps(entries),
+            extratags=tags,
             software=(text or {}).get("Software", "skyoptics").encode("ascii", "replace").decode(),
             metadata=None,
         )
@@ -274,7 +285,7 @@ def _chunk(kind: bytes, data: bytes) -> bytes:
 
 
 def _text_chunk(key: str, value: str) -> bytes:
-    """Return a tEXt chunk for ASCII, else iTXt (UTF-8, uncompressed, no language)."""
+    """Return an iTXt chunk (UTF-8, uncompressed, no language) for words of people and XMP, else tEXt where ASCII will do."""
     try:
         name = key.encode("latin-1")
     except UnicodeEncodeError:
@@ -283,7 +294,7 @@ def _text_chunk(key: str, value: str) -> bytes:
         raise DomainError(f"text entry {key!r}: a name has 1 to 79 printable Latin-1 characters, no blank at an end")
     if "\0" in value:
         raise DomainError(f"text entry {key!r}: holds a zero byte")
-    if value.isascii():
+    if value.isascii() and key != XMP and key not in WRITTEN_BY_HAND:
         return _chunk(b"tEXt", name + b"\0" + value.encode("ascii"))
     return _chunk(b"iTXt", name + b"\0\0\0\0\0" + value.encode("utf-8"))
 

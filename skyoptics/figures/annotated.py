@@ -15,10 +15,11 @@ from numpy.typing import NDArray
 from skyoptics.camera.overlay import AngleScale, CompassTick
 from skyoptics.colour.images import dither_threshold
 from skyoptics.errors import DomainError
-from skyoptics.figures.lettering import Box, Point, text_size
+from skyoptics.figures.lettering import Box, Point, check_glyphs, text_size
 from skyoptics.figures.placement import Label, Placed, arrange
 from skyoptics.figures.sheet import Sheet
 from skyoptics.units import DEG, ArrayLike, FloatArray
+from skyoptics.words.table import say
 
 
 class Annotated(NamedTuple):
@@ -27,6 +28,21 @@ class Annotated(NamedTuple):
     rgb: NDArray[np.uint8]
     placed: list[Placed]
     dropped: list[str]
+
+
+class Arc(NamedTuple):
+    """A thin line with a text on it.
+
+    Parameters
+    ----------
+    points : ndarray, shape (n, 2)
+        Column, row [pixel], parts divided by nan.
+    text : str
+        Set upon the line where there is room.
+    """
+
+    points: FloatArray
+    text: str
 
 
 def annotate(
@@ -38,8 +54,10 @@ def annotate(
     sun: Point | None = None,
     antisolar: Point | None = None,
     scale: AngleScale | None = None,
+    circles: Sequence[Arc] = (),
     title: str | None = None,
-    source_name: str = "Sun",
+    by_moon: bool = False,
+    lang: str = "en",
 ) -> Annotated:
     """Return a labelled copy of a picture, pixel by pixel the same where nothing is drawn.
 
@@ -51,10 +69,14 @@ def annotate(
         The most important first.
     horizon, compass, sun, antisolar, scale :
         From `skyoptics.camera.overlay`; what is missing is not drawn.
+    circles : sequence of Arc
+        Dotted, with their texts.
     title : str, optional
         Set at the top left; cut where it is too long.
-    source_name : str
-        Of what stands at `sun`.
+    by_moon : bool
+        Whether the moon stands at `sun`.
+    lang : str
+        Language of compass, marks and scale.
 
     Returns
     -------
@@ -63,8 +85,9 @@ def annotate(
     Raises
     ------
     DomainError
-        For a picture of another shape.
+        For a picture of another shape, a language that is not there, and texts that the font has no letters for.
     """
+    check_glyphs(title or "", *(label.text for label in labels), *(arc.text for arc in circles))
     picture = _eight_bits(rgb)
     shape = (picture.shape[0], picture.shape[1])
     sheet = Sheet(shape, text_size(shape))
@@ -72,21 +95,28 @@ def annotate(
     if title:
         taken.append(sheet.title(title))
     if scale is not None:
-        taken.append(sheet.scale(scale.length, f"{scale.angle / DEG:g}° at the centre"))
+        taken.append(sheet.scale(scale.length, say("mark.scale", lang, angle=scale.angle / DEG)))
     if horizon is not None and len(horizon):
         sheet.line(horizon)
     for tick in compass:
-        taken += sheet.tick(tick, taken)
+        taken += sheet.tick(tick._replace(text=tick.text and say(f"compass.{tick.text}", lang)), taken)
     if sun is not None:
-        taken += sheet.mark(sun, source_name, True, taken)
+        taken += sheet.mark(sun, _capital(say("feature.moon" if by_moon else "feature.sun", lang)), True, taken)
     if antisolar is not None:
-        taken += sheet.mark(antisolar, "Antisolar point", False, taken)
+        opposite = say("feature.antilunar_point" if by_moon else "feature.antisolar_point", lang)
+        taken += sheet.mark(antisolar, _capital(opposite), False, taken)
+    for arc in circles:
+        taken += sheet.arc(arc.points, arc.text, taken)
     placed, dropped = arrange(labels, shape, taken, horizon)
     for one in placed:
         sheet.leader(one.leader)
     for one in placed:
         sheet.text(one.lines, one.box, one.align)
     return Annotated(sheet.over(picture), placed, dropped)
+
+
+def _capital(text: str) -> str:
+    return text[:1].upper() + text[1:]
 
 
 def _eight_bits(rgb: ArrayLike) -> NDArray[np.uint8]:

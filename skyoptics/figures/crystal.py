@@ -17,6 +17,7 @@ from skyoptics.crystals.faces import face_labels
 from skyoptics.crystals.shapes import Shape
 from skyoptics.errors import DomainError
 from skyoptics.figures.lettering import Box, cut, drawn_width, font_of, meets
+from skyoptics.figures.palette import FAINT, INK
 from skyoptics.units import DEG, FloatArray
 
 if TYPE_CHECKING:
@@ -29,7 +30,7 @@ SHEET = (720.0, 430.0)
 """Width and height [point]."""
 ELEVATION = 20.0 * DEG
 """How far the view from the side is from above [rad]."""
-INK, FAINT, PALE = "#16324c", "#6d8499", "#ffffff"
+PALE = "#ffffff"
 DARK_FACE, LIGHT_FACE = np.array([150.0, 188.0, 219.0]) / 255.0, np.array([240.0, 248.0, 254.0]) / 255.0
 
 _ROOM = (240.0, 250.0)

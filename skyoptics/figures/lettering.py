@@ -4,10 +4,16 @@ from __future__ import annotations
 
 from bisect import bisect_right
 from collections.abc import Callable
+from functools import cache
+from pathlib import Path
 from typing import Any
 
 import numpy as np
 
+from skyoptics.errors import DomainError
+
+FONT = "DejaVu Sans"
+"""It comes with the drawing library, licence and all, so that every machine draws alike."""
 INK = "#ffffff"
 """Colour of text and lines."""
 CASING = "#0a0d14"
@@ -31,10 +37,67 @@ def text_size(shape: tuple[int, int]) -> float:
 
 
 def font_of(size: float, weight: str = "normal") -> Any:
-    """Return the font: the one that comes with the drawing library, so that every machine draws alike."""
+    """Return the font, `FONT`.
+
+    Raises
+    ------
+    DomainError
+        Where the drawing library has lost it.
+    """
     from matplotlib.font_manager import FontProperties
 
-    return FontProperties(family="DejaVu Sans", size=size, weight=weight)
+    font_file(weight)
+    return FontProperties(family=FONT, size=size, weight=weight)
+
+
+@cache
+def font_file(weight: str = "normal") -> Path:
+    """Return the file of the font.
+
+    Raises
+    ------
+    DomainError
+        Where there is none.
+    """
+    from matplotlib.font_manager import FontProperties, findfont
+
+    try:
+        return Path(findfont(FontProperties(family=FONT, weight=weight), fallback_to_default=False))
+    except ValueError as error:
+        raise DomainError(
+            f"the font {FONT} ({weight}) is not there: it comes with matplotlib, in its folder mpl-data/fonts/ttf; "
+            "install matplotlib anew"
+        ) from error
+
+
+def missing_glyphs(text: str, weight: str = "normal") -> str:
+    """Return the characters of a text that the font has no letter for, each once."""
+    there = _characters(weight)
+    return "".join(dict.fromkeys(c for c in text if ord(c) not in there and not c.isspace()))
+
+
+def check_glyphs(*texts: str) -> None:
+    """Make sure that the font can write texts.
+
+    Raises
+    ------
+    DomainError
+        Naming the characters it lacks, the text and the font.
+    """
+    for text in texts:
+        if lacking := missing_glyphs(text, "bold") or missing_glyphs(text):
+            raise DomainError(
+                f"the font {FONT} has no letters for {lacking[:20]!r} in {text[:60]!r}; write it in Latin, Greek or "
+                "Cyrillic letters"
+            )
+
+
+@cache
+def _characters(weight: str) -> frozenset[int]:
+    """Return the code points of the font."""
+    from matplotlib.ft2font import FT2Font
+
+    return frozenset(FT2Font(str(font_file(weight))).get_charmap())
 
 
 def drawn_width(size: float, weight: str = "normal") -> Measure:

@@ -12,6 +12,9 @@ from skyoptics.camera.overlay import CompassTick
 from skyoptics.figures.lettering import CASING, INK, LINE, Box, Point, cut, drawn_width, font_of, meets
 from skyoptics.units import FloatArray
 
+_ARC_TEXT = 0.62
+"""Where the text of a dotted line is wanted, as a share of the width."""
+
 
 class Sheet:
     """A clear sheet of a picture's size to draw on, laid over it at the end; `size` is an em [pixel]."""
@@ -70,6 +73,20 @@ class Sheet:
         self._plot(
             points[:, 0], points[:, 1], max(0.8, 0.05 * self.size), 0.07 * self.size, linestyle=(0, (6, 5)), alpha=0.75
         )
+
+    def arc(self, points: FloatArray, text: str, taken: Sequence[Box]) -> list[Box]:
+        """Draw a dotted line with a text upon it, right of the middle where there is room."""
+        width = max(1.0, 0.07 * self.size)
+        self._plot(points[:, 0], points[:, 1], width, 0.05 * self.size, linestyle=(0, (1.0, 6.0)), alpha=0.85)
+        half = drawn_width(self.size)(text) / 2.0
+        places = points[np.isfinite(points).all(axis=1)]
+        wanted = np.abs(places[:, 0] - _ARC_TEXT * self.shape[1]) + 0.25 * places[:, 1]  # high before low
+        for x, y in places[np.argsort(wanted, kind="stable")].tolist():
+            box = self._box(x - half, y, 2.0 * half)
+            if self._free(box, taken):
+                self.text([text], box, "left")
+                return [box]
+        return []
 
     def tick(self, tick: CompassTick, taken: Sequence[Box]) -> list[Box]:
         """Draw a compass tick, its letters under the horizon or, where the picture ends there, above."""

@@ -243,6 +243,31 @@ class Directions:
         scale, column, row, q_max = self.map
         return replace(self, shape=shape, map=(scale / side, (column - shift) / side, (row - shift) / side, q_max))
 
+    def crop(self, rows: slice, columns: slice) -> Directions:
+        """Return the grid of some rows and columns of this one: the same directions under the same pixels.
+
+        Parameters
+        ----------
+        rows, columns : slice
+            Without a step; negative ends count from the end.
+
+        Raises
+        ------
+        DomainError
+            If nothing is left, or for a step.
+        """
+        spans = [part.indices(size) for part, size in zip((rows, columns), self.shape, strict=True)]
+        (top, bottom, _), (left, right, _) = spans
+        if bottom <= top or right <= left or {step for *_, step in spans} != {1}:
+            raise DomainError("a part of a grid needs a row and a column at least, and no step")
+        shape = bottom - top, right - left
+        if self.kind == CYLINDRICAL:
+            longitude_first, longitude_step, latitude_first, latitude_step = self.map
+            first, high = longitude_first + left * longitude_step, latitude_first - top * latitude_step
+            return replace(self, shape=shape, map=(first, longitude_step, high, latitude_step))
+        scale, column, row, q_max = self.map
+        return replace(self, shape=shape, map=(scale, column - left, row - top, q_max))
+
     def packed(self) -> Float32Array:
         """Return the grid as one float32 array for kernels.
 

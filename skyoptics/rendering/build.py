@@ -5,21 +5,18 @@ Nothing is traced here. Whatever the physics refuses is reported as a fault of t
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass, replace
-from functools import partial
 from typing import NamedTuple
 
 import numpy as np
 
 from skyoptics.camera import frame
-from skyoptics.droplets import sizes as sizes_of
-from skyoptics.droplets.sizes import SizeDistribution, effective_radius
-from skyoptics.droplets.spectra import read_spectrum
 from skyoptics.errors import DataFileError, DomainError, Fault, SceneError
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.geometry.directions import Directions
+from skyoptics.geometry.horizon import Profile
 from skyoptics.light.air import MINIMUM_ELEVATION, Air
 from skyoptics.light.disc import SUN_RADIUS
 from skyoptics.light.mirror import in_water
@@ -29,54 +26,19 @@ from skyoptics.light.sun import sun
 from skyoptics.materials import index as material
 from skyoptics.optics.bins import Bins
 from skyoptics.optics.source import Source
-from skyoptics.rendering.clouds import CrystalSheet, crystal_sheet, curtain_amount, hang, layer_amount
+from skyoptics.rendering.clouds import CrystalSheet, crystal_sheet, hang
+from skyoptics.rendering.landscape import ground_of, water_of
+from skyoptics.rendering.rain import DropSheet, drop_sheet
+from skyoptics.rendering.way import Surroundings, haze_of, put_in_place
 from skyoptics.scene.model import Light, Scene
 from skyoptics.scene.particles import Crystals, Drops
 from skyoptics.sky.compose import Background, Behind
-from skyoptics.units import CELSIUS_ZERO, DEG, NM, FloatArray
+from skyoptics.sky.water import Water
+from skyoptics.units import CELSIUS_ZERO, DEG, NM
 
 DEFAULT_EDGES_NM = (380.0, 400.0, 415.0, *np.arange(430.0, 681.0, 10.0).tolist(), 695.0, 715.0, 740.0, 780.0)
 """Edges of the default bins [nm]: 10 nm where the eye sees well, wider at the ends."""
 VISIBLE_NM = (380.0, 780.0)
-WATER_DENSITY = 1000.0
-"""For turning liquid water content into a number of drops [kg m⁻³]."""
-
-
-@dataclass(frozen=True, eq=False)
-class DropSheet:
-    """Drops and where they hang.
-
-    Parameters
-    ----------
-    name : str
-        For reports.
-    index : RefractiveIndex
-        Of the drops, relative to what they float in.
-    radius : float
-        Effective radius [m].
-    orders : tuple of int
-        Orders p to show.
-    amount : callable
-        Elevation [rad], source → amount [1].
-    method : str
-        "rays", "mie", "airy" or "auto".
-    sizes : SizeDistribution
-        How the radius is spread; `radius` is its effective one.
-    axis_ratios : str
-        "round", or a law of `skyoptics.droplets.axis_ratio`.
-    canting : float
-        Spread of the tilt of flattened drops [rad].
-    """
-
-    name: str
-    index: material.RefractiveIndex
-    radius: float
-    orders: tuple[int, ...]
-    amount: Callable[[FloatArray, Source], FloatArray]
-    method: str
-    sizes: SizeDistribution
-    axis_ratios: str = "round"
-    canting: float = 0.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -103,6 +65,10 @@ class Job:
         Whether the moon shines, at which one may look.
     cover : float
         Angular radius of a disc held over the source [rad].
+    water : Water or None
+        Calm water below the horizon, in which the rest is mirrored.
+    land : Profile or None
+        Outline of the land, where a scene has land of its own.
     """
 
     bins: Bins
@@ -114,6 +80,8 @@ class Job:
     stokes: bool = False
     by_moon: bool = False
     cover: float = 0.0
+    water: Water | None = None
+    land: Profile | None = None
 
 
 def build(scene: Scene, where: str, stokes: bool = False) -> Job:
@@ -126,7 +94,7 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
     where : str
         Name of its file, for faults.
     stokes : bool
-        Whether all four Stokes components will be asked for; a polariser asks for them anyway.
+        Whether all four Stokes components will be asked for; a polariser and water ask for them anyway.
 
     Returns
     -------
@@ -149,11 +117,7 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
             index(bins.edges)  # asks for the whole range now, not in the middle of a job
             name = particles.name or f"{particles.kind} {number}"
             if isinstance(particles, Drops):
-                sizes = _sizes(particles)
-                amount = _amount(particles, _depth(particles, sizes))
-                radius = effective_radius(sizes)
-                shape = (particles.axis_ratios, particles.canting)
-                sheets.append(DropSheet(name, index, radius, particles.orders, amount, particles.method, sizes, *shape))
+                sheets.append(drop_sheet(particles, name, index, scene.camera.eye_height))
             else:
                 crystals.append((len(sheets), crystal_sheet(particles, name, index)))
                 sheets.append(crystals[-1][1])
@@ -166,6 +130,16 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
         background = _behind(scene, seen, bins, sources[0])
     with _blame(where, "camera"):
         directions = _directions(scene, sources[0])
+    air, eye_height = air_of(scene.light), scene.camera.eye_height
+    haze = haze_of(air, scene.medium.visual_range)
+    with _blame(where, "ground"):
+        ground = ground_of(scene.ground, scene.picture.ground, eye_height, background, bins, sources, haze)
+    with _blame(where, "air"):
+        pixel = float(np.nanmedian(directions.pixel_size()))
+        around = Surroundings(bins, sources, background, air, haze, eye_height, ground, pixel)
+        background, sheets = put_in_place(sheets, around)
+    with _blame(where, "ground"):
+        water = water_of(scene.ground, eye_height, ground or background, bins, sources)
     return Job(
         bins,
         sources,
@@ -173,9 +147,11 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
         directions,
         background,
         scene.camera.polariser,
-        stokes or scene.camera.polariser is not None,
+        stokes or scene.camera.polariser is not None or water is not None,
         scene.light.body == "moon",
         scene.camera.cover,
+        water,
+        None if ground is None else ground.profile,
     )
 
 
@@ -195,7 +171,7 @@ def spectral_bins(scene: Scene) -> Bins:
 def _sources(scene: Scene, seen: Placed, bins: Bins) -> tuple[Source, ...]:
     light = scene.light
     elevation, azimuth, phase_angle, radius = seen
-    air = _air(light) if light.attenuation == "air" else None
+    air = air_of(light)
     disc = light.disc != "point"
     if light.body == "moon":
         first = moon(elevation, azimuth, phase_angle, bins, air, disc)
@@ -212,6 +188,11 @@ def _sources(scene: Scene, seen: Placed, bins: Bins) -> tuple[Source, ...]:
         return (first,)
     water = material.water(CELSIUS_ZERO + 10.0, scene.medium.kind)(bins.edges.ravel()).real.reshape(-1, 2).mean(axis=1)
     return first, in_water(first, water)
+
+
+def air_of(light: Light) -> Air | None:
+    """Return the air that dims a light; None where none does."""
+    return _air(light) if light.attenuation == "air" else None
 
 
 def _air(light: Light) -> Air:
@@ -231,13 +212,18 @@ def _behind(scene: Scene, seen: Placed, bins: Bins, source: Source) -> Behind:
         return Background(picture.background, picture.ground, len(bins))
     from skyoptics.sky.clear import ClearSky
     from skyoptics.sky.overcast import StandardSky
+    from skyoptics.sky.reflectance import reflectance
 
     above = moonlight(seen.phase_angle) if scene.light.body == "moon" else None
-    clear = ClearSky(bins, source.direction, _air(scene.light), picture.ground, above)
+    albedo = picture.ground
+    if scene.ground is not None:
+        surface = scene.ground.surface if scene.ground.water == "none" else scene.ground.water
+        albedo = float(reflectance(surface, bins).mean())
+    clear = ClearSky(bins, source.direction, _air(scene.light), albedo, above)
     if picture.sky == "clear":
         return clear
     falling = clear.diffuse + clear.direct
-    return StandardSky.cloud(1, source.direction, falling, picture.cloud_depth, picture.ground)
+    return StandardSky.cloud(1, source.direction, falling, picture.cloud_depth, albedo)
 
 
 class Placed(NamedTuple):
@@ -288,45 +274,6 @@ def _index(particles: Drops | Crystals, medium: str) -> material.RefractiveIndex
     if isinstance(particles, Drops):
         return material.water(particles.temperature, medium)
     return material.ice(medium)
-
-
-def _sizes(drops: Drops) -> SizeDistribution:
-    match drops.sizes:
-        case "lognormal":
-            return sizes_of.LogNormal(drops.radius, drops.spread)
-        case "effective":
-            return sizes_of.HansenTravis(drops.radius, drops.effective_variance)
-        case "gamma":
-            return sizes_of.UlbrichGamma(2.0 * drops.radius, drops.gamma_shape)
-        case "rain":
-            return sizes_of.MarshallPalmer(drops.rain_mm_h)
-        case "cloud":
-            return sizes_of.Deirmendjian(drops.cloud)
-        case "measured":
-            assert drops.spectrum is not None
-            return read_spectrum(drops.spectrum, drops.spectrum_time)
-        case _:
-            return (
-                sizes_of.Gaussian(drops.radius, drops.spread) if drops.spread > 0.0 else sizes_of.Single(drops.radius)
-            )
-
-
-def _depth(drops: Drops, sizes: SizeDistribution) -> float:
-    """Return the optical depth: as given, or 2π ⟨r²⟩ · number · path, extinction being twice the area of large drops."""
-    if drops.path_m is None:
-        return drops.optical_depth
-    if drops.concentration_per_m3 is not None:
-        number = drops.concentration_per_m3
-    else:
-        assert drops.liquid_water_g_m3 is not None
-        number = drops.liquid_water_g_m3 * 1e-3 / (WATER_DENSITY * 4.0 / 3.0 * np.pi * float(sizes.moment(3)))
-    return 2.0 * np.pi * float(sizes.moment(2)) * number * drops.path_m
-
-
-def _amount(drops: Drops, optical_depth: float) -> Callable[[FloatArray, Source], FloatArray]:
-    if drops.place == "curtain":
-        return partial(curtain_amount, optical_depth=optical_depth, below_horizon=drops.below_horizon)
-    return partial(layer_amount, optical_depth=optical_depth)
 
 
 def _directions(scene: Scene, source: Source) -> Directions:

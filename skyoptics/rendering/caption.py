@@ -1,8 +1,13 @@
-"""What to look for in a picture, worked out from its physics, and the cautions that go with it."""
+"""Captions: what a picture shows, by what light and particles, and what is not as in nature; what to look for; cautions.
+
+`write` speaks from a report alone, `what_to_look_for` and `cautions` from the physics before anything is traced.
+"""
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
+from datetime import datetime
+from typing import Any
 
 import numpy as np
 
@@ -11,29 +16,110 @@ from skyoptics.crystals.arcs import feature
 from skyoptics.crystals.sorting import sorter
 from skyoptics.geometry.axes import angle_between, azimuth_elevation
 from skyoptics.optics import bows
-from skyoptics.rendering.build import DropSheet, Job
+from skyoptics.rendering import alt_text, phrases
+from skyoptics.rendering.build import Job
 from skyoptics.rendering.clouds import CrystalSheet
+from skyoptics.rendering.rain import DropSheet
 from skyoptics.units import DEG
+from skyoptics.words.table import check_language, listed, number, say, sentence
 
-_NAMES = {2: "primary", 3: "secondary"}
-SUN_CAUTION = (
-    "The sun stands in or near this frame. Never look at it through an optical viewfinder, binocular or telescope; hide "
-    "it behind a fixed object, keep a lens on it only as long as an exposure takes. Filters to ISO 12312-2 are for looking "
-    "without optics."
-)
-SHOWER_CAUTION = (
-    "Showers bring lightning: when you hear thunder, go indoors and wait 30 minutes after the last clap, as national "
-    "weather services advise. Stop off the road, keep back from edges and water; local rules come first."
-)
+_NAMES = {2: "primary_bow", 3: "secondary_bow"}
+_MOST_FEATURES, _MOST_PARTICLES, _MOST_POINTS = 8, 3, 4
 
 
-def what_to_look_for(job: Job) -> str:
+def write(report: Mapping[str, Any], lang: str = "en") -> str:
+    """Return the caption of a picture.
+
+    Parameters
+    ----------
+    report : mapping
+        Of a render, with `shows` in it (`skyoptics.rendering.shows`).
+    lang : str
+        One of `skyoptics.words.table.languages`.
+
+    Returns
+    -------
+    str
+        Three or four sentences: what is seen; where the sun or moon stands; for which particles it was computed; what
+        differs from nature, if anything does.
+
+    Raises
+    ------
+    DomainError
+        For a language that is not there, or a report without `shows`.
+    """
+    check_language(lang)
+    shown = phrases.facts(report)
+    sentences = [
+        alt_text.what(shown, lang, _MOST_FEATURES, shown["angles_deg"]),
+        phrases.light(shown["light"], lang),
+        say("picture.computed", lang, particles=phrases.particles(shown["particles"], lang, _MOST_PARTICLES)),
+    ]
+    if points := phrases.unlike(shown["unlike"], shown["light"]["body"], lang, _MOST_POINTS):
+        sentences.append(say("picture.unlike", lang, points=points))
+    return " ".join(sentence(text) for text in sentences)
+
+
+def rights(report: Mapping[str, Any], lang: str = "en") -> str:
+    """Return the lines on author and licence of a report's `author` and `licence`; empty where it has neither."""
+    lines = [say(f"picture.{key}", lang, **{key: report[key]}) for key in ("author", "licence") if report.get(key)]
+    return "\n".join(lines)
+
+
+def page(report: Mapping[str, Any], lang: str = "en") -> str:
+    """Return the text that lies beside a picture: title, caption, alt text, author and licence, parted by blank lines."""
+    alt = say("picture.alt", lang, text=alt_text.write(report, lang))
+    parts = [report.get("title"), write(report, lang), alt, rights(report, lang)]
+    return "\n\n".join(part for part in parts if part) + "\n"
+
+
+def today(
+    name: str,
+    start: datetime | None,
+    best: datetime | None,
+    end: datetime | None,
+    elevation_deg: float = 0.0,
+    azimuth_deg: float = 0.0,
+    body: str = "sun",
+    lang: str = "en",
+) -> str:
+    """Return the sentence "To see this today", from a window of time.
+
+    Parameters
+    ----------
+    name : str
+        Of the feature, a key of the group "feature" of `skyoptics.words.table`.
+    start, best, end : datetime or None
+        Ends of the window and its best time, in the zone they are to be told in; None where there is no window today.
+    elevation_deg, azimuth_deg : float
+        Of the sun or moon at best.
+    body : str
+        "sun" or "moon".
+    lang : str
+        Language.
+
+    Returns
+    -------
+    str
+        That the feature does not form, where any of the times is None.
+    """
+    words = {"feature": say(f"feature.{name}", lang), "body": say(f"body.{body}", lang)}
+    if start is None or best is None or end is None:
+        return say("today.never", lang, **words)
+    times = {key: f"{time:%H:%M}" for key, time in (("start", start), ("best", best), ("end", end))}
+    point = phrases.compass_point(azimuth_deg, lang)
+    return say("today.window", lang, height=elevation_deg, azimuth=azimuth_deg % 360.0, point=point, **words, **times)
+
+
+def what_to_look_for(job: Job, lang: str = "en") -> str:
     """Return one sentence on what a picture shows and where.
 
     Parameters
     ----------
     job : Job
         The scene as physics.
+    lang : str
+        Language.
     """
     azimuth, elevation = azimuth_elevation(-job.sources[0].direction)
     middle = job.bins.edges[np.argmin(np.abs(job.bins.centre - 600e-9))].mean()
@@ -45,18 +131,20 @@ def what_to_look_for(job: Job) -> str:
                 continue
             top = float(elevation) + angle
             if top > 0.0 or job.directions.project(-job.sources[0].direction)[0] > 0.0:
-                found.append(f"{_NAMES[order]} bow {angle / DEG:.1f}° from the antisolar point, its top {_height(top)}")
-    halos = list(dict.fromkeys(_halos(job)))
+                name = say(f"feature.{_NAMES[order]}", lang)
+                found.append(say("look.bow", lang, feature=name, angle=angle / DEG, height=_height(top, lang)))
+    halos = list(dict.fromkeys(_halos(job, lang)))
     if not found and halos:
         sun = float(azimuth_elevation(job.sources[0].direction)[0] / DEG)
-        body = "moon" if job.by_moon else "sun"
-        return f"look around the {body}, azimuth {round(sun) % 360}°: " + "; ".join(halos)
+        body = say("body.moon" if job.by_moon else "body.sun", lang)
+        return say("look.around", lang, body=body, azimuth=round(sun) % 360, things="; ".join(halos))
     if not found:
-        return "light scattered by the particles over a plain background"
-    return f"look towards azimuth {round(float(azimuth / DEG)) % 360}°: " + "; ".join(dict.fromkeys(found))
+        return say("look.nothing", lang)
+    towards = round(float(azimuth / DEG)) % 360
+    return say("look.towards", lang, azimuth=towards, things="; ".join(dict.fromkeys(found)))
 
 
-def _halos(job: Job) -> Iterator[str]:
+def _halos(job: Job, lang: str) -> Iterator[str]:
     """Yield the main halos of a job's crystals, from closed forms."""
     height = float(azimuth_elevation(job.sources[0].direction)[1])
     middle = job.bins.edges[np.argmin(np.abs(job.bins.centre - 600e-9))].mean()
@@ -67,34 +155,32 @@ def _halos(job: Job) -> Iterator[str]:
             names = sorter(sheet.shapes[0].face_normals, law, height, index).names
             radii = [circle_radius(feature(name).crystals[0].sequences[0], index) / DEG for name in names[1:]]
             if radii:
-                yield "circles of " + ", ".join(f"{radius:.1f}°" for radius in sorted(radii)) + " radius"
+                told = [f"{number(radius, lang, '.1f')}°" for radius in sorted(radii)]
+                yield say("look.circles", lang, radii=listed(told, lang))
         elif law == "plate":
             away = parhelion_azimuth(height, index)
             if np.isfinite(away):
-                yield f"sundogs at {away / DEG:.1f}° of azimuth on both sides, {_height(height)}"
+                yield say("look.sundogs", lang, angle=away / DEG, height=_height(height, lang))
             square = index**2 - np.cos(height) ** 2
             if height > 0.0 and square <= 1.0:
-                yield f"circumzenithal arc {np.arcsin(np.sqrt(square)) / DEG:.1f}° high"
+                yield say("look.zenith_arc", lang, angle=float(np.arcsin(np.sqrt(square))) / DEG)
         elif law in ("column", "parry"):
             joined = height >= tangent_join(index)
-            arc = "circumscribed halo" if joined else "tangent arcs above and below"
-            yield f"{arc}, {circle_radius((3, 5), index) / DEG:.1f}° from it"
+            yield say("look.joined" if joined else "look.tangents", lang, angle=circle_radius((3, 5), index) / DEG)
 
 
-def cautions(job: Job) -> list[str]:
+def cautions(job: Job, lang: str = "en") -> list[str]:
     """Return the cautions for whoever goes out to see this."""
     result = []
     if not job.by_moon and _sun_near_frame(job):
-        result.append(SUN_CAUTION)
+        result.append(say("caution.sun", lang))
     if any(isinstance(sheet, DropSheet) for sheet in job.sheets):
-        result.append(SHOWER_CAUTION)
+        result.append(say("caution.shower", lang))
     return result
 
 
-def _height(elevation: float) -> str:
-    if elevation >= 0.0:
-        return f"{elevation / DEG:.1f}° high"
-    return f"{-elevation / DEG:.1f}° below the horizon"
+def _height(elevation: float, lang: str) -> str:
+    return say("look.high" if elevation >= 0.0 else "look.low", lang, height=abs(elevation) / DEG)
 
 
 def _sun_near_frame(job: Job, margin: float = 15.0 * DEG) -> bool:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, fields, replace
 from functools import partial
 from typing import Any
@@ -21,6 +21,7 @@ from skyoptics.optics.source import Source
 from skyoptics.scene.model import Mixture
 from skyoptics.scene.particles import Crystals
 from skyoptics.sky.amount import curtain, layer
+from skyoptics.sky.compose import Amount
 from skyoptics.sky.slab import slab as slab_of
 from skyoptics.units import FloatArray
 
@@ -48,8 +49,8 @@ class CrystalSheet:
         Its law.
     diameter : float
         Across corners [m]; for absorption and diffraction.
-    amount : callable
-        Elevation [rad], source → amount [1].
+    bare : callable
+        Azimuth, elevation [rad], source → amount [1], of the crystals alone.
     imperfections : Imperfections
         What sets them apart from ideal ones.
     optical_depth : float
@@ -58,6 +59,12 @@ class CrystalSheet:
         In a slab 1, 2 or "all"; 0 outside one.
     above : bool
         Whether a layer or slab is looked down on.
+    height : float or None
+        Of a layer or slab above the observer [m]; None where no air lies between.
+    before_land : bool
+        Whether a curtain hangs in front of the land.
+    fade : callable or None
+        Azimuth, elevation [rad], source → what land, air and nearer volumes leave of its light, (…, nλ); None: all.
     """
 
     name: str
@@ -65,11 +72,19 @@ class CrystalSheet:
     shapes: tuple[Shape, ...]
     orientation: Orientation
     diameter: float
-    amount: Callable[[FloatArray, Source], FloatArray]
+    bare: Amount
     imperfections: Imperfections = IDEAL
     optical_depth: float = 0.0
     scatterings: int | str = 0
     above: bool = False
+    height: float | None = None
+    before_land: bool = False
+    fade: Amount | None = None
+
+    def amount(self, azimuth: FloatArray, elevation: FloatArray, source: Source) -> FloatArray:
+        """Return the amount, with what happens to the light on its way, shape (…, nλ) or (…, 1) [1]."""
+        bare = self.bare(azimuth, elevation, source)
+        return bare if self.fade is None else bare * self.fade(azimuth, elevation, source)
 
     @property
     def cross_section(self) -> float:
@@ -161,25 +176,29 @@ def hang(
             optical_depth=depth,
             scatterings=what.scatterings if what.place == "slab" else 0,
             above=what.seen_from == "above",
+            height=what.height,
+            before_land=what.below_horizon,
         )
         for sheet, what, depth in zip(sheets, particles, depths, strict=True)
     ]
     slab = tuple(sheet for sheet in placed if sheet.scatterings)
     in_slab = [what for what in particles if what.place == "slab"]
-    if len({(what.scatterings, what.seen_from) for what in in_slab}) > 1:
-        raise DomainError("all tables of a slab share one layer: give them the same scatterings and seen_from")
+    if len({(what.scatterings, what.seen_from, what.height_km) for what in in_slab}) > 1:
+        raise DomainError(
+            "all tables of a slab share one layer: give them the same scatterings, seen_from and height_km"
+        )
     result = []
     total = sum(sheet.optical_depth for sheet in slab)
     table = mixed_extinction(slab) if total > 0.0 else np.ones(2)
     for sheet, what in zip(placed, particles, strict=True):
-        amount: Callable[[FloatArray, Source], FloatArray]
+        amount: Amount
         if what.place == "curtain":
             amount = partial(curtain_amount, optical_depth=sheet.optical_depth, below_horizon=what.below_horizon)
         elif what.place == "layer":
             amount = partial(layer_amount, optical_depth=sheet.optical_depth, above=sheet.above)
         else:
             amount = partial(slab_amount, depth=sheet.optical_depth, total=total, table=table, above=sheet.above)
-        result.append(replace(sheet, amount=amount))
+        result.append(replace(sheet, bare=amount))
     return tuple(result)
 
 
@@ -223,24 +242,34 @@ def shared_depths(
     ]
 
 
-def curtain_amount(elevation: FloatArray, source: Source, optical_depth: float, below_horizon: bool) -> FloatArray:
+def curtain_amount(
+    azimuth: FloatArray, elevation: FloatArray, source: Source, optical_depth: float, below_horizon: bool
+) -> FloatArray:
     """Return the amount of a curtain, whatever the source."""
-    return curtain(elevation, optical_depth, below_horizon)
+    return curtain(elevation, optical_depth, below_horizon)[..., None]
 
 
-def layer_amount(elevation: FloatArray, source: Source, optical_depth: float, above: bool = False) -> FloatArray:
+def layer_amount(
+    azimuth: FloatArray, elevation: FloatArray, source: Source, optical_depth: float, above: bool = False
+) -> FloatArray:
     """Return the amount of a thin layer, whatever the source; `above`: of one that is looked down on."""
-    return layer(-elevation if above else elevation, optical_depth)
+    return layer(-elevation if above else elevation, optical_depth)[..., None]
 
 
 def slab_amount(
-    elevation: FloatArray, source: Source, depth: float, total: float, table: FloatArray, above: bool
+    azimuth: FloatArray,
+    elevation: FloatArray,
+    source: Source,
+    depth: float,
+    total: float,
+    table: FloatArray,
+    above: bool,
 ) -> FloatArray:
     """Return the amount of one kind of crystals in a slab that all kinds of it weaken.
 
     Parameters
     ----------
-    elevation : ndarray
+    azimuth, elevation : ndarray
         Of lines of sight [rad].
     source : Source
         What lights the slab.
@@ -252,10 +281,10 @@ def slab_amount(
         Whether the slab is looked down on.
     """
     if depth == 0.0:
-        return np.zeros(np.shape(elevation))
+        return np.zeros((*np.shape(elevation), 1))
     sun_elevation = float(np.arcsin(np.clip(source.direction[2], -1.0, 1.0)))
     amount = slab_of(elevation, sun_elevation, total, partial(extinction_at, table))
-    return np.where(elevation <= 0.0 if above else elevation >= 0.0, depth / total * amount, 0.0)
+    return np.where(elevation <= 0.0 if above else elevation >= 0.0, depth / total * amount, 0.0)[..., None]
 
 
 def mixed_extinction(sheets: Sequence[CrystalSheet]) -> FloatArray:

@@ -98,6 +98,8 @@ class Curve:
     report: dict[str, Any]
     parts: ScatteringTable | None = None
     """The same by named halo; None for drops."""
+    orders: ScatteringTable | None = None
+    """The same by order of a drop's light; None for crystals and Mie theory."""
 
 
 def drop(asked: DropCurve, progress: Progress = silent) -> Curve:
@@ -145,9 +147,8 @@ def drop(asked: DropCurve, progress: Progress = silent) -> Curve:
         else:
             whole = waves.scattering_table(sizes, law, bins, method=method, angles=edges, tolerance=target, **shared)
     orders = tuple(range(11)) if asked.orders is None else asked.orders
-    table = (
-        whole.select([str(order) for order in orders]).total() if "2" in whole.parts else _in_bins(whole.total(), edges)
-    )
+    kept = whole.select([str(order) for order in orders]) if "2" in whole.parts else None
+    table = _in_bins(whole.total(), edges) if kept is None else kept.total()
     report: dict[str, Any] = {
         "method": method,
         "reason": reason,
@@ -159,7 +160,10 @@ def drop(asked: DropCurve, progress: Progress = silent) -> Curve:
     if "2" in whole.parts:
         report["orders"] = list(orders)
         report["energy_by_order"] = whole.report["energy"]
-    return _curve(table, whole, law, bins, asked, report)
+    found = _curve(table, whole, law, bins, asked, report)
+    if kept is not None and asked.disc:
+        kept = over_disc(kept, sun_disc(bins), kept.angle)
+    return replace(found, orders=kept)
 
 
 def _in_bins(table: ScatteringTable, edges: FloatArray) -> ScatteringTable:

@@ -11,9 +11,9 @@ import numpy as np
 from skyoptics.colour.images import replacing
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.optics.polarisation import degree_of_linear_polarisation
+from skyoptics.rendering.looking import look, stokes
 from skyoptics.rendering.memory import blocks
-from skyoptics.rendering.run import Result, look
-from skyoptics.sky.compose import stokes
+from skyoptics.rendering.run import Result
 from skyoptics.units import DEG, NM
 
 if TYPE_CHECKING:
@@ -44,7 +44,7 @@ def dataset(result: Result, attributes: Mapping[str, str]) -> xarray.Dataset:
     if job.stokes:
         degree, angle = np.empty_like(values), np.empty_like(values)
         for rows in blocks(job.directions.shape):
-            seen = stokes(job.directions, rows, job.sources, result.sheets, job.background, job.cover)
+            seen = stokes(job, result.sheets, rows, result.mirror)
             degree[rows] = degree_of_linear_polarisation(seen)
             angle[rows] = 0.5 * np.arctan2(seen[..., 2], seen[..., 1]) / DEG
         polarisation = {
@@ -61,7 +61,7 @@ def dataset(result: Result, attributes: Mapping[str, str]) -> xarray.Dataset:
         }
     azimuth = np.empty(job.directions.shape)
     elevation = np.empty(job.directions.shape)
-    for rows, block in look(job, result.sheets, None):
+    for rows, block in look(job, result.sheets, None, mirror=result.mirror):
         values[rows] = block
         azimuth[rows], elevation[rows] = azimuth_elevation(job.directions.vectors(rows))
     return xr.Dataset(

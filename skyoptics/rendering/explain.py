@@ -21,9 +21,10 @@ from skyoptics.geometry.axes import angle_between, azimuth_elevation, direction
 from skyoptics.geometry.directions import Directions
 from skyoptics.optics.batches import in_order
 from skyoptics.rendering import expose, further
-from skyoptics.rendering.build import DropSheet, Job, build
+from skyoptics.rendering.build import Job, build
 from skyoptics.rendering.named import FURTHER, OTHER, Parted
-from skyoptics.rendering.run import Settings
+from skyoptics.rendering.rain import DropSheet
+from skyoptics.rendering.run import Settings, whole_amount
 from skyoptics.rendering.scatter import Progress, axisymmetric, find_table, is_table, silent
 from skyoptics.scene.model import Scene
 from skyoptics.units import DEG, FloatArray
@@ -70,14 +71,14 @@ def explain(
         "rectilinear", 1.0, (tangent, tangent), (1, 1), frame.aim(azimuth_deg * DEG, elevation_deg * DEG, 0.0)
     )
     job = replace(job, directions=spot, polariser=None, stokes=False)
-    _, elevation = azimuth_elevation(spot.vectors())
+    azimuth, elevation = azimuth_elevation(spot.vectors())
     found: list[dict[str, Any]] = []
     with ThreadPoolExecutor(settings.threads) as executor:
         for sheet in job.sheets:
             for source in job.sources:
-                amount = float(sheet.amount(elevation, source)[0, 0])
+                amount = sheet.amount(azimuth, elevation, source)[0, 0]
                 light = weights(job.bins)[:, 1] * source.irradiance * amount
-                if amount == 0.0:
+                if not np.any(amount):
                     continue
                 if is_table(sheet):
                     table, _ = find_table(sheet, job, settings.sampling, executor, progress)
@@ -102,7 +103,9 @@ def explain(
         slab = further.slab_of(job)
         for source in job.sources if slab else ():
             scatterer, _ = further.find(slab, whole_sky(job), source, settings.sampling, executor, progress, side=1)
-            light = weights(job.bins)[:, 1] * source.irradiance
+            light = (
+                weights(job.bins)[:, 1] * source.irradiance * whole_amount(azimuth, elevation, source, slab[0])[0, 0]
+            )
             found.append(_entry(FURTHER, "crystals of the slab", float(scatterer.phase(source, spot)[0, 0] @ light)))
     background = job.background.radiance(spot.vectors())[0, 0] @ weights(job.bins)[:, 1]
     found.append(_entry("background", "", float(background)))

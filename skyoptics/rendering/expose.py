@@ -320,7 +320,7 @@ def lightness_error(
         One standard error of displayed lightness, all films together [1]; nan outside the image.
     """
     scale = exposure_scale(exposure_ev)
-    _, elevation = azimuth_elevation(job.directions.vectors())
+    azimuth, elevation = (np.nan_to_num(angle) for angle in azimuth_elevation(job.directions.vectors()))
     solid = job.directions.solid_angle()
     eye = weights(job.bins)[:, 1] * (1.0 if job.polariser is None else 0.5)
     inside = np.isfinite(luminance)
@@ -328,9 +328,11 @@ def lightness_error(
     errors = []
     films_light = np.zeros(luminance.shape)
     for work in works:
-        ratio = scale * float((eye * work.source.irradiance).sum() / work.film.reference.sum())
+        seen = eye * work.source.irradiance
+        whole = work.sheet.amount(azimuth, elevation, work.source)
+        grey = whole[..., 0] if whole.shape[-1] == 1 else whole @ (seen / seen.sum())
         amount = np.divide(
-            work.sheet.amount(np.nan_to_num(elevation), work.source) * ratio,
+            grey * (scale * float(seen.sum() / work.film.reference.sum())),
             solid,
             out=np.zeros_like(solid),
             where=solid > 0.0,

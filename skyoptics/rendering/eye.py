@@ -12,13 +12,17 @@ from skyoptics.colour import white as whites
 from skyoptics.colour.develop import Developed
 from skyoptics.colour.observer import weights
 from skyoptics.errors import DomainError, Fault, SceneError
+from skyoptics.geometry.axes import azimuth_elevation
+from skyoptics.light.mirror import in_water
+from skyoptics.materials import index as material
+from skyoptics.optics.source import Source
 from skyoptics.rendering.build import Job
 from skyoptics.rendering.clouds import CrystalSheet
 from skyoptics.rendering.memory import blocks
 from skyoptics.scene.model import Picture, Scene
 from skyoptics.sky.compose import Sheet
 from skyoptics.sky.slab import vertical_cosine
-from skyoptics.units import Float32Array, FloatArray
+from skyoptics.units import CELSIUS_ZERO, Float32Array, FloatArray
 
 
 def exposure_asked(scene: Scene, where: str) -> float | None:
@@ -70,7 +74,9 @@ def through_the_eye(job: Job, sheets: list[Sheet], xyz: Float32Array, picture: P
     if not drawn:
         return xyz
     rows, columns = job.directions.shape
-    for number, source in enumerate(job.sources):
+    for number, source in enumerate(_drawn(job)):
+        if not _above_land(job, source):
+            continue
         row, column = job.directions.project(source.direction)
         if not (np.isfinite(row) and np.isfinite(column)) or (number == 0 and job.cover > 0.0):
             continue
@@ -80,7 +86,7 @@ def through_the_eye(job: Job, sheets: list[Sheet], xyz: Float32Array, picture: P
         reach = 0.5 + radius / float(size[place])
         if not (-reach < row < rows - 1 + reach and -reach < column < columns - 1 + reach):
             continue
-        irradiance = source.irradiance * _straight_through(job, sheets, number)
+        irradiance = source.irradiance * _straight_through(job, sheets, min(number, len(job.sources) - 1))
         if job.polariser is not None:
             axis = 2.0 * polariser(job.directions, job.polariser, slice(place[0], place[0] + 1))[0, place[1]]
             _, q, u, _ = source.stokes.T
@@ -108,6 +114,24 @@ def through_the_eye(job: Job, sheets: list[Sheet], xyz: Float32Array, picture: P
     return xyz
 
 
+def _drawn(job: Job) -> tuple[Source, ...]:
+    """Return the bodies to draw: what shines, and its image where water mirrors it."""
+    first = job.sources[0]
+    if job.water is None or len(job.sources) > 1 or first.direction[2] <= 0.0 or np.any(first.stokes[:, 1:]):
+        return job.sources
+    return first, in_water(first, material.water(CELSIUS_ZERO + 10.0)(job.bins.centre).real)
+
+
+def _above_land(job: Job, source: Source) -> bool:
+    """Return whether a body, or what water mirrors of it, stands clear of the land."""
+    if job.land is None:
+        return True
+    azimuth, elevation = (float(angle) for angle in azimuth_elevation(source.direction))
+    if elevation < 0.0 and job.water is None:
+        return False
+    return abs(elevation) > float(job.land.elevation(azimuth))
+
+
 def _straight_through(job: Job, sheets: list[Sheet], number: int) -> FloatArray:
     """Return the share of a source's light, shape (nλ,), that comes straight through everything in the air.
 
@@ -115,7 +139,7 @@ def _straight_through(job: Job, sheets: list[Sheet], number: int) -> FloatArray:
     extinction, it counts as not turned at all.
     """
     source = job.sources[number]
-    elevation = np.arcsin(np.clip(source.direction[2:], -1.0, 1.0))
+    azimuth, elevation = (angle[None] for angle in azimuth_elevation(source.direction))
     depth = np.zeros(len(job.bins))
     for described, sheet in zip(
         job.sheets, sheets, strict=False
@@ -127,10 +151,10 @@ def _straight_through(job: Job, sheets: list[Sheet], number: int) -> FloatArray:
             share = getattr(scatterer, "share", np.zeros(1))
             diffracted = float(np.mean(share)) > 0.75 * float(np.mean(scatterer.extinction(np.ones(1))))
         if isinstance(described, CrystalSheet) and described.scatterings:
-            amount = described.optical_depth / vertical_cosine(elevation)
+            amount = described.optical_depth / vertical_cosine(elevation)[:, None]
         else:
-            amount = sheet.amount(elevation, source)
-        extinction = scatterer.extinction(np.abs(source.direction[2:])) * amount[:, None]
+            amount = described.bare(azimuth, elevation, source)
+        extinction = scatterer.extinction(np.abs(source.direction[2:])) * amount
         depth += (1.0 if diffracted else 0.5) * extinction[0]
     return np.asarray(np.exp(-depth))
 

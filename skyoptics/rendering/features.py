@@ -15,10 +15,11 @@ from skyoptics.geometry.axes import angle_between, around, azimuth_elevation, di
 from skyoptics.geometry.directions import Directions
 from skyoptics.optics import bows
 from skyoptics.optics.source import Source
-from skyoptics.rendering.build import DropSheet, Job
+from skyoptics.rendering.build import Job
 from skyoptics.rendering.clouds import CrystalSheet
 from skyoptics.rendering.expose import sorter_of
 from skyoptics.rendering.named import FURTHER, OTHER
+from skyoptics.rendering.rain import DropSheet
 from skyoptics.rendering.scatter import ICE_INDEX
 from skyoptics.units import DEG, BoolArray, FloatArray
 
@@ -62,7 +63,7 @@ class Line:
     kind: str
     views: FloatArray
     centre: FloatArray
-    lit: Callable[[FloatArray], BoolArray]
+    lit: Callable[[FloatArray, FloatArray], BoolArray]
     reach: float = REACH
     width: float = WIDTH
 
@@ -141,9 +142,9 @@ def _bow(sheets: list[DropSheet], source: Source, order: int, mirrored: bool) ->
     return Line(name, title, "curve", views, -source.direction, _lit(sheets, source), REACH + shift, width)
 
 
-def _lit(sheets: list[Any], source: Source) -> Callable[[FloatArray], BoolArray]:
-    def lit(elevation: FloatArray) -> BoolArray:
-        return np.asarray(sum(np.asarray(sheet.amount(elevation, source)) for sheet in sheets) > 0.0)
+def _lit(sheets: list[Any], source: Source) -> Callable[[FloatArray, FloatArray], BoolArray]:
+    def lit(azimuth: FloatArray, elevation: FloatArray) -> BoolArray:
+        return np.any([np.any(sheet.amount(azimuth, elevation, source) > 0.0, axis=-1) for sheet in sheets], axis=0)
 
     return lit
 
@@ -157,7 +158,7 @@ def missing(line: Line, job: Job) -> tuple[str, str] | None:
     name, verb = f"the {line.title}", "are" if several else "is"
     if not len(views):
         return "does not form", f"{name} {'do' if several else 'does'} not form: {body}"
-    views = views[line.lit(azimuth_elevation(views)[1])]
+    views = views[line.lit(*azimuth_elevation(views))]
     if not len(views):
         return "below the horizon", f"{name} {verb} below the horizon: {body}"
     if framed(job.directions, views).any():

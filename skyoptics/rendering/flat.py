@@ -17,7 +17,8 @@ from skyoptics.kernels import KERNEL_HASH
 from skyoptics.optics.position_table import PositionTable
 from skyoptics.optics.source import Source
 from skyoptics.rendering import store
-from skyoptics.rendering.build import DropSheet, Job
+from skyoptics.rendering.build import Job
+from skyoptics.rendering.rain import DropSheet
 from skyoptics.rendering.scatter import Progress, Sampling, Traced, identity
 from skyoptics.units import FloatArray
 

@@ -1,4 +1,4 @@
-"""An annotated copy of a render: arcs named where their own light is to be seen."""
+"""An annotated copy of a render: arcs and bows named where their light is to be seen."""
 
 from __future__ import annotations
 
@@ -13,11 +13,13 @@ from skyoptics.crystals.arcs import feature, locus
 from skyoptics.figures.annotated import Annotated, annotate
 from skyoptics.figures.placement import Label
 from skyoptics.geometry.axes import azimuth_elevation
+from skyoptics.rendering.bow_labels import bow_circles, bow_labels
 from skyoptics.rendering.expose import group_side
 from skyoptics.rendering.named import FURTHER, OTHER, in_cells, own_light
 from skyoptics.rendering.run import Result
 from skyoptics.rendering.scatter import ICE_INDEX
 from skyoptics.units import FloatArray
+from skyoptics.words.table import say
 
 SEEN = 0.03
 """Contrast of an arc at its best, against its own surroundings, from which it is named."""
@@ -27,15 +29,39 @@ AROUND = 5
 """Cells to each side that are an arc's surroundings."""
 ANCHORS = 300
 """Candidate points of an arc, the strongest ones."""
-_TITLES = {FURTHER: "light scattered twice and more"}
 
 
-def arc_labels(result: Result) -> list[Label]:
-    """Return the names of the arcs that are seen in a picture, the strongest first.
+def labels_by_name(result: Result, lang: str = "en") -> dict[str, Label]:
+    """Return the labels of what is seen in a picture by the name of the feature, the strongest first.
+
+    Parameters
+    ----------
+    result : Result
+    lang : str
+        Language of the labels.
+
+    Returns
+    -------
+    dict of str to Label
+        Names are keys of the group "feature" of `skyoptics.words.table`. Bows: `skyoptics.rendering.bow_labels`.
+    """
+    found = [*_arcs(result, lang), *(bow_labels(result, lang) if "only" not in result.report else [])]
+    return {name: label for _, name, label in sorted(found, key=lambda entry: -entry[0])}
+
+
+def arc_labels(result: Result, lang: str = "en") -> list[Label]:
+    """Return the labels of what is seen in a picture, the strongest first."""
+    return list(labels_by_name(result, lang).values())
+
+
+def _arcs(result: Result, lang: str) -> list[tuple[float, str, Label]]:
+    """Return importance, name and label of the arcs of crystals.
 
     An arc is seen where its own light stands out from its surroundings: by how much its share of the luminance exceeds the
     mean within `AROUND` cells. Diffuse light counts whole.
     """
+    if not result.parted:
+        return []
     from scipy.ndimage import uniform_filter
 
     job = result.job
@@ -43,7 +69,7 @@ def arc_labels(result: Result) -> list[Label]:
     luminance, whole = in_cells(job, result.xyz[..., 1], side)
     luminance = np.where(whole == 1.0, luminance, 0.0)
     near = uniform_filter((luminance > 0.0).astype(np.float64), 2 * AROUND + 1)
-    found: list[tuple[float, Label]] = []
+    found: list[tuple[float, str, Label]] = []
     for name, light in own_light(job, result.parted, side).items():
         if name == OTHER:
             continue
@@ -55,16 +81,20 @@ def arc_labels(result: Result) -> list[Label]:
         share = np.minimum(_steady(share), 1.0)
         if share.max(initial=0.0) < (DIFFUSE_SEEN if diffuse else SEEN):
             continue
-        text = _TITLES.get(name) or feature(name).title
         strength = share * np.sqrt(light / light.max())  # the dot goes where the arc is bright
-        found.append((_weight(share), Label(text[:1].upper() + text[1:], _anchors(strength, side))))
-    twice = _seen_twice(result, side, luminance, near)
-    if twice is not None:
-        found.append(twice)
-    return [label for _, label in sorted(found, key=lambda pair: -pair[0])]
+        found.append((_weight(share), name, Label(_title(name, lang), _anchors(strength, side))))
+    twice = _seen_twice(result, side, luminance, near, lang)
+    return found if twice is None else [*found, twice]
 
 
-def _seen_twice(result: Result, side: int, luminance: FloatArray, near: FloatArray) -> tuple[float, Label] | None:
+def _title(name: str, lang: str) -> str:
+    text = say(f"feature.{name}", lang)
+    return text[:1].upper() + text[1:]
+
+
+def _seen_twice(
+    result: Result, side: int, luminance: FloatArray, near: FloatArray, lang: str
+) -> tuple[float, str, Label] | None:
     """Return the label of the 44° parhelia where further scatterings show them: brighter there than around."""
     from scipy.ndimage import uniform_filter
 
@@ -83,9 +113,8 @@ def _seen_twice(result: Result, side: int, luminance: FloatArray, near: FloatArr
     strength = [float((share - mean)[row, column]) for column, row in cells]
     if not strength or max(strength) < SEEN:
         return None
-    text = feature("parhelia_44").title
     anchors = np.column_stack([points, np.maximum(strength, 0.0)])
-    return max(strength), Label(text[:1].upper() + text[1:], anchors)
+    return max(strength), "parhelia_44", Label(_title("parhelia_44", lang), anchors)
 
 
 def _shifted(name: str, azimuth: float, elevation: float) -> tuple[FloatArray, FloatArray]:
@@ -94,24 +123,26 @@ def _shifted(name: str, azimuth: float, elevation: float) -> tuple[FloatArray, F
     return offset + azimuth, height
 
 
-def labelled(result: Result) -> FloatArray | Any:
+def labelled(result: Result, lang: str = "en") -> FloatArray | Any:
     """Return a labelled copy of a picture, display-encoded, 0 to 1, shape (ny, nx, 3)."""
-    return annotated(result).rgb / 255.0
+    return annotated(result, lang).rgb / 255.0
 
 
-def annotated(result: Result) -> Annotated:
-    """Return a labelled copy of a picture and what became of the labels."""
+def annotated(result: Result, lang: str = "en") -> Annotated:
+    """Return a labelled copy of a picture, in a language, and what became of the labels."""
     grid, source = result.job.directions, result.job.sources[0].direction
     return annotate(
         encode(result.developed.rgb),
-        arc_labels(result),
+        arc_labels(result, lang),
+        circles=bow_circles(result.job, lang),
         horizon=overlay.horizon(grid),
         compass=overlay.compass(grid),
         sun=overlay.mark(grid, source),
         antisolar=overlay.mark(grid, -source),
         scale=overlay.angle_scale(grid),
         title=result.report["title"],
-        source_name="Moon" if result.job.by_moon else "Sun",
+        by_moon=result.job.by_moon,
+        lang=lang,
     )
 
 

@@ -5,10 +5,11 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from skyoptics.errors import ResourceError
-from skyoptics.rendering.build import DropSheet, Job
+from skyoptics.rendering.build import Job
 from skyoptics.rendering.clouds import CrystalSheet
 from skyoptics.rendering.expose import GROUP_CELLS
 from skyoptics.rendering.further import side_of, slab_of
+from skyoptics.rendering.rain import DropSheet
 from skyoptics.rendering.scatter import is_table
 
 SHARE = 0.7
@@ -44,6 +45,7 @@ def predict(job: Job, threads: int, data: bool, only: bool = False) -> int:
     rows, columns = job.directions.shape
     pixels, bands = rows * columns, len(job.bins)
     films = sum(isinstance(sheet, CrystalSheet) and not is_table(sheet) for sheet in job.sheets)
+    films *= 1 if job.water is None else 2  # one more for what the water mirrors
     picture = pixels * (12 + 12)  # XYZ and linear RGB in float32
     radiance = pixels * (4 * bands + 2 * 8) if data else 0
     blocks = threads * max(BLOCK, columns) * bands * 8 * 4
@@ -60,15 +62,7 @@ def predict(job: Job, threads: int, data: bool, only: bool = False) -> int:
         planes += len(job.sources) * cells * components * (8 + 4) * bands + threads * int(_LAYER_BATCH)
     flat = sum(isinstance(sheet, DropSheet) and not is_table(sheet) for sheet in job.sheets) * len(job.sources)
     return int(
-        _PROGRAM
-        + (len(job.sheets) - films) * _TABLE
-        + flat * _FLAT_TABLE
-        + picture
-        + radiance
-        + blocks
-        + planes
-        + noise
-        + flying
+        _PROGRAM + len(job.sheets) * _TABLE + flat * _FLAT_TABLE + picture + radiance + blocks + planes + noise + flying
     )
 
 

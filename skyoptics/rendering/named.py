@@ -111,21 +111,23 @@ def own_light(job: Job, parted: Sequence[Parted], side: int) -> dict[str, FloatA
 def _lights(job: Job, parted: Sequence[Parted], side: int) -> Iterator[tuple[str, FloatArray]]:
     eye = weights(job.bins)[:, 1]
     grid: Directions = job.directions.coarse(side)
-    _, elevation = azimuth_elevation(grid.vectors())
+    azimuth, elevation = azimuth_elevation(grid.vectors())
     inside = np.isfinite(elevation)
     solid = binned(job.directions.solid_angle(), side)
     assert solid.shape == coarse_shape(job.directions.shape, side)
     for part in parted:
         light = eye * part.source.irradiance
-        amount = np.where(inside, part.sheet.amount(np.nan_to_num(elevation), part.source), 0.0)
+        amount = part.sheet.amount(np.nan_to_num(azimuth), np.nan_to_num(elevation), part.source)
+        amount = np.where(inside[..., None], amount, 0.0)
         if part.work is not None:
             film = part.work.film
             if film.groups is None:
                 continue
-            power = np.einsum("w,wgyx->gyx", light * film.scale(), film.groups, optimize=True)
-            per_solid = np.divide(amount, solid, out=np.zeros_like(solid), where=solid > 0.0)
+            lit = np.moveaxis(np.broadcast_to(light * amount, (*solid.shape, len(light))), -1, 0)
+            power = np.einsum("w,wyx,wgyx->gyx", film.scale(), lit, film.groups, optimize=True)
+            per_solid = np.divide(1.0, solid, out=np.zeros_like(solid), where=solid > 0.0)
             yield from zip(film.names, power * per_solid, strict=True)
             continue
         for name in part.names:
             phase = part.scatterer([name]).phase(part.source, grid)
-            yield name, np.nan_to_num(phase @ light) * amount
+            yield name, np.nan_to_num(phase * amount) @ light

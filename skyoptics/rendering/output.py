@@ -16,8 +16,9 @@ from skyoptics.colour import images, metadata
 from skyoptics.colour.develop import Developed
 from skyoptics.colour.display import decode, linear_rgb
 from skyoptics.errors import ResourceError
-from skyoptics.rendering import dataset
+from skyoptics.rendering import alt_text, caption, dataset
 from skyoptics.rendering.run import Result
+from skyoptics.rendering.shows import shows
 from skyoptics.scene.model import Scene
 from skyoptics.units import Float32Array
 
@@ -32,18 +33,39 @@ NOISE_WHITE = 0.05
 """Error of displayed lightness that a noise map shows as white [1]."""
 
 
-def text_entries(report: Mapping[str, Any], command: Sequence[str]) -> dict[str, str]:
-    """Return a picture's metadata: what it is and how to make it again; nothing private in it."""
+def text_entries(report: Mapping[str, Any], command: Sequence[str], lang: str = "en") -> dict[str, str]:
+    """Return a picture's metadata: what it is and how to make it again; nothing private in it.
+
+    Description is the alt text, in the report's `alt_text`, or what to look for where there is none yet.
+    """
+    author, licence = report.get("author"), report.get("licence")
     entries: dict[str, str] = metadata.picture_metadata(
         software="skyoptics",
         version=skyoptics.__version__,
         title=report["title"],
-        description=report["look_for"],
+        description=report.get("alt_text", report["look_for"]),
+        author=author,
+        rights=licence,
         scene_hash=report["scene_hash"],
         seed=report["seed"],
         command=command,
-        more={"Quality": report["quality"], "Exposure EV": f"{report['exposure_ev']:g}"},
+        more={
+            "Look for": report["look_for"],
+            "Quality": report["quality"],
+            "Exposure EV": f"{report['exposure_ev']:g}",
+        },
     )
+    if "caption" in report:
+        entries["Caption"] = metadata.strip_private(report["caption"])
+        entries[metadata.XMP] = metadata.xmp(
+            title=report["title"],
+            caption=report["caption"],
+            alt_text=report["alt_text"],
+            author=author,
+            rights=licence,
+            software=entries["Software"],
+            lang=lang,
+        )
     return entries
 
 
@@ -65,6 +87,8 @@ class Wanted:
         Whether to write a picture of the error of displayed lightness.
     labels : bool
         Whether to write an annotated copy.
+    lang : str
+        Language of labels, caption and alt text.
     """
 
     folder: Path
@@ -73,6 +97,7 @@ class Wanted:
     extra: Sequence[str] = ()
     noise_map: bool = False
     labels: bool = False
+    lang: str = "en"
 
     def path(self, ending: str) -> Path:
         """Return the path of one file."""
@@ -80,7 +105,7 @@ class Wanted:
 
     def paths(self) -> list[Path]:
         """Return the files that `write` will make, the picture first."""
-        endings = ["png", "json", *(["nc"] if self.data else []), *self.extra]
+        endings = ["png", "json", "caption.txt", *(["nc"] if self.data else []), *self.extra]
         if self.noise_map:
             endings.append("noise.png")
         if self.labels:
@@ -136,7 +161,8 @@ def write(result: Result, scene: Scene, wanted: Wanted, command: Sequence[str]) 
     list of Path
         What was written, the picture first.
     """
-    entries = text_entries(result.report, command)
+    describe(result, scene, wanted.lang)
+    entries = text_entries(result.report, command, wanted.lang)
     files = wanted.paths()
     if wanted.data:
         provenance = {
@@ -147,7 +173,8 @@ def write(result: Result, scene: Scene, wanted: Wanted, command: Sequence[str]) 
         more = {key.lower().replace(" ", "_"): entries[key] for key in ("Scene hash", "Seed", "Quality")}
         dataset.write(dataset.dataset(result, provenance | more), wanted.path("nc"))
     if "exr" in wanted.extra:
-        images.write_exr(wanted.path("exr"), linear_rgb(result.xyz), text=entries | ABSOLUTE)
+        plain = {key: text for key, text in entries.items() if key != metadata.XMP}  # OpenEXR knows no XMP
+        images.write_exr(wanted.path("exr"), linear_rgb(result.xyz), text=plain | ABSOLUTE)
     if "tiff" in wanted.extra:
         images.write_tiff(wanted.path("tiff"), linear_rgb(result.xyz), text=entries | ABSOLUTE)
     if wanted.noise_map:
@@ -155,13 +182,23 @@ def write(result: Result, scene: Scene, wanted: Wanted, command: Sequence[str]) 
     if wanted.labels:
         from skyoptics.rendering.labels import labelled
 
-        images.write_png(wanted.path("labels.png"), labelled(result), encoded=True, text=entries)
+        images.write_png(wanted.path("labels.png"), labelled(result, wanted.lang), encoded=True, text=entries)
     report = result.report | {"command": entries["Command"], "files": [path.name for path in files]}
     with images.replacing(wanted.path("json")) as aside:
         aside.write_text(json.dumps(report, indent=2, ensure_ascii=False) + "\n", encoding="utf-8")
+    with images.replacing(wanted.path("caption.txt")) as aside:
+        aside.write_text(metadata.strip_private(caption.page(result.report, wanted.lang)), encoding="utf-8")
     images.write_png(files[0], result.developed.rgb, bits=scene.picture.depth_bits, text=entries)
     wanted.preview_path.unlink(missing_ok=True)
     return files
+
+
+def describe(result: Result, scene: Scene, lang: str) -> None:
+    """Put into a report what its picture shows, its caption and its alt text."""
+    result.report["shows"] = shows(result, scene)
+    result.report["language"] = lang
+    result.report["caption"] = caption.write(result.report, lang)
+    result.report["alt_text"] = alt_text.write(result.report, lang)
 
 
 def traced_otherwise(wanted: Wanted, report: Mapping[str, Any]) -> str | None:

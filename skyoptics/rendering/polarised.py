@@ -19,11 +19,11 @@ from skyoptics.colour.observer import Observer, weights
 from skyoptics.rendering import expose
 from skyoptics.rendering.build import Job, build
 from skyoptics.rendering.features import lines, missing
+from skyoptics.rendering.looking import stokes
 from skyoptics.rendering.profiles import measure
-from skyoptics.rendering.run import Settings, scatter_all
+from skyoptics.rendering.run import Settings, reflection, scatter_all
 from skyoptics.rendering.scatter import Progress, Sampling, silent
 from skyoptics.scene.model import Scene
-from skyoptics.sky.compose import stokes
 from skyoptics.units import DEG, ArrayLike, FloatArray
 
 COARSE = 240
@@ -130,13 +130,15 @@ def polarised_luminance(
     with ThreadPoolExecutor(settings.threads) as executor:
         try:
             sheets, _, works, _ = scatter_all(job, settings.sampling, executor, progress)
+            mirror = reflection(job, settings.sampling, executor, progress)
+            works += [] if mirror is None else mirror.works
             if works:
                 sampling = Sampling(settings.quality, settings.seed, rays)
                 expose.trace(works, sampling, executor, lambda: [0.0] * len(works), progress, lambda: None)
         except BaseException:
             executor.shutdown(wait=True, cancel_futures=True)
             raise
-    seen = stokes(job.directions, slice(None), job.sources, sheets, job.background, job.cover)
+    seen = stokes(job, sheets, slice(None), mirror)
     i, q, u, _ = np.einsum("yxws,w->syx", seen, weights(job.bins, observer)[:, 1])
     turn = 2.0 * polariser(job.directions, 0.0)
     along, across = q * np.cos(turn) + u * np.sin(turn), u * np.cos(turn) - q * np.sin(turn)

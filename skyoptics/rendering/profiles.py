@@ -164,7 +164,7 @@ def _course(line: Line, source: Source) -> tuple[FloatArray, FloatArray, FloatAr
         normal /= np.maximum(np.linalg.norm(normal, axis=1, keepdims=True), 1e-300)
         normal *= np.where(normal @ line.centre > 0.0, -1.0, 1.0)[:, None]  # away from the centre
         across = normal[:, None, :]
-    fair = line.lit(azimuth_elevation(views)[1]) & (angle_between(views, source.direction) > DAZZLED)
+    fair = line.lit(*azimuth_elevation(views)) & (angle_between(views, source.direction) > DAZZLED)
     fair &= np.linalg.norm(across[:, 0], axis=1) > 0.5
     fair &= ~_repeated(views, step)
     return views[fair], across[fair], weight[fair], branch[fair]

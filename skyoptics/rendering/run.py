@@ -10,24 +10,24 @@ from collections.abc import Callable, Iterator
 from concurrent.futures import Executor, ProcessPoolExecutor, ThreadPoolExecutor
 from contextlib import contextmanager
 from dataclasses import dataclass, field, replace
+from functools import partial
 from typing import Any
 
 import numpy as np
 
 import skyoptics
-from skyoptics.camera.frame import polariser
 from skyoptics.colour.develop import Developed, develop
-from skyoptics.colour.observer import weights
 from skyoptics.crystals.arcs import feature
 from skyoptics.errors import DomainError
 from skyoptics.optics.source import Source
 from skyoptics.rendering import expose, flat, further, memory
-from skyoptics.rendering.build import DropSheet, Job, build
+from skyoptics.rendering.build import Job, build
 from skyoptics.rendering.caption import cautions, what_to_look_for
 from skyoptics.rendering.clouds import CrystalSheet
 from skyoptics.rendering.eye import camera_settings, exposure_asked, kelvin, neutral, through_the_eye
-from skyoptics.rendering.memory import blocks
+from skyoptics.rendering.looking import Mirror, mirrored, tristimulus
 from skyoptics.rendering.named import FURTHER, OTHER, Parted
+from skyoptics.rendering.rain import DropSheet
 from skyoptics.rendering.scatter import (
     Progress,
     Sampling,
@@ -41,7 +41,7 @@ from skyoptics.rendering.scatter import (
 from skyoptics.rendering.store import trace_key
 from skyoptics.scene.digest import scene_hash
 from skyoptics.scene.model import Scene
-from skyoptics.sky.compose import Background, Scatterer, Sheet, radiance
+from skyoptics.sky.compose import Background, Scatterer, Sheet
 from skyoptics.units import Float32Array, FloatArray
 
 
@@ -95,6 +95,8 @@ class Result:
         One standard error of the displayed lightness [1]; None where nothing was traced onto the picture itself.
     parted : list of Parted
         Light of the crystals by named arc.
+    mirror : Mirror or None
+        What is seen in water.
     """
 
     job: Job
@@ -104,6 +106,7 @@ class Result:
     report: dict[str, Any]
     noise: FloatArray | None = None
     parted: list[Parted] = field(default_factory=list)
+    mirror: Mirror | None = None
 
 
 def usable_cores() -> int:
@@ -111,51 +114,6 @@ def usable_cores() -> int:
     if hasattr(os, "sched_getaffinity"):
         return len(os.sched_getaffinity(0))
     return os.cpu_count() or 1
-
-
-def look(
-    job: Job, sheets: list[Sheet], executor: Executor | None, progress: Progress = silent
-) -> Iterator[tuple[slice, FloatArray]]:
-    """Yield the radiance of the picture block by block, in order.
-
-    Parameters
-    ----------
-    job : Job
-        What to look at.
-    sheets : list of Sheet
-        From `skyoptics.rendering.scatter.scatter`.
-    executor : Executor or None
-        Looks ahead; None works in this thread.
-    progress : callable
-        Told about rows.
-
-    Yields
-    ------
-    rows : slice
-        Which rows.
-    block : ndarray, shape (rows, nx, nλ)
-        [W m⁻² sr⁻¹ nm⁻¹]
-    """
-    shape = job.directions.shape
-
-    def work(rows: slice) -> FloatArray:
-        axis = None if job.polariser is None else polariser(job.directions, job.polariser, rows)
-        return radiance(job.directions, rows, job.sources, sheets, job.background, axis, job.cover)
-
-    parts = list(blocks(shape))
-    if executor is None:
-        for rows in parts:
-            progress("looking", rows.stop, shape[0])
-            yield rows, work(rows)
-        return
-    ahead = 2 * getattr(executor, "_max_workers", 2)
-    waiting = [executor.submit(work, rows) for rows in parts[:ahead]]
-    for number, rows in enumerate(parts):
-        block = waiting.pop(0).result()
-        if number + ahead < len(parts):
-            waiting.append(executor.submit(work, parts[number + ahead]))
-        progress("looking", rows.stop, shape[0])
-        yield rows, block
 
 
 def render(
@@ -212,6 +170,7 @@ def render(
     with ThreadPoolExecutor(settings.threads) as threads, _tracers(settings, threads) as tracers:
         try:
             sheets, traced, works, parted = scatter_all(job, settings.sampling, tracers, progress)
+            mirror = reflection(job, settings.sampling, tracers, progress)
             before = [work.film.traced_rays for work in works]
 
             def now() -> tuple[Float32Array, Developed]:
@@ -233,11 +192,15 @@ def render(
 
                 parts = expose.trace(works, settings.sampling, tracers, measure, progress, show)
             traced_at = time.perf_counter()
-            if xyz is None or developed is None:
-                xyz = tristimulus(job, sheets, picture.observer, threads, progress)
+            if mirror is not None:
+                for work, other in zip(works, mirror.works, strict=True):
+                    expose.follow(other, work.film.rounds, tracers, progress)
+            if xyz is None or developed is None or mirror is not None:
+                xyz = tristimulus(job, sheets, picture.observer, threads, progress, mirror)
                 xyz = through_the_eye(job, sheets, xyz, picture)
                 developed = develop(xyz, exposure_ev, white, picture.metering)
             if only is not None:
+                mirror = None
                 sheets = _only(only, job, settings.sampling, sheets, parted, tracers, progress)
                 job = replace(job, background=Background(0.0, 0.0, len(job.bins)))
                 xyz = tristimulus(job, sheets, picture.observer, threads, progress)
@@ -257,7 +220,7 @@ def render(
         about["lightness_error"] = float(np.sqrt(sum(part**2 for part in parts)))
         about["lightness_error_target"] = settings.sampling.target if settings.rays is None else None
     about["seconds"] = {"trace": round(traced_at - start, 3), "look": round(time.perf_counter() - traced_at, 3)}
-    return Result(job, sheets, xyz, developed, about, noise, parted)
+    return Result(job, sheets, xyz, developed, about, noise, parted, mirror)
 
 
 @contextmanager
@@ -361,24 +324,25 @@ def scatter_all(
     if slab:
         lights = [further.find(slab, job, source, sampling, executor, progress) for source in job.sources]
         traced += [how for _, how in lights]
-        sheets.append(Sheet(FURTHER, tuple(light for light, _ in lights), whole_amount))
+        sheets.append(Sheet(FURTHER, tuple(light for light, _ in lights), partial(whole_amount, sheet=slab[0])))
     return sheets, traced, works, parted
 
 
-def whole_amount(elevation: FloatArray, source: Source) -> FloatArray:
-    """Return 1: the amount of light that comes with its amount in it."""
-    return np.ones(np.shape(elevation))
+def reflection(job: Job, sampling: Sampling, executor: Executor, progress: Progress) -> Mirror | None:
+    """Return what calm water mirrors, its films still to be traced; None without water."""
+    if job.water is None:
+        return None
+    other = mirrored(job)
+    sheets, _, works, _ = scatter_all(other, sampling, executor, progress)
+    return Mirror(other, sheets, works)
 
 
-def tristimulus(
-    job: Job, sheets: list[Sheet], observer: Any, executor: Executor | None, progress: Progress = silent
-) -> Float32Array:
-    """Return the picture's XYZ, shape (ny, nx, 3) [cd m⁻²]."""
-    matrix = weights(job.bins, observer)
-    xyz = np.empty((*job.directions.shape, 3), dtype=np.float32)
-    for rows, block in look(job, sheets, executor, progress):
-        xyz[rows] = block @ matrix
-    return xyz
+def whole_amount(
+    azimuth: FloatArray, elevation: FloatArray, source: Source, sheet: CrystalSheet | None = None
+) -> FloatArray:
+    """Return the amount of light that comes with its amount in it: what is left of it on the way down."""
+    fade = None if sheet is None else sheet.fade
+    return np.ones((*np.shape(elevation), 1)) if fade is None else fade(azimuth, elevation, source)
 
 
 def report(
@@ -396,6 +360,8 @@ def report(
         "skyoptics": skyoptics.__version__,
         "scene": os.path.basename(where),
         "title": scene.title,
+        "author": scene.author,
+        "licence": scene.licence,
         "scene_hash": scene_hash(scene),
         "seed": settings.seed,
         "quality": settings.quality,

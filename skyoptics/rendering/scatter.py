@@ -17,8 +17,9 @@ from skyoptics.optics.bins import Bins
 from skyoptics.optics.source import Disc
 from skyoptics.optics.table import ScatteringTable
 from skyoptics.rendering import store
-from skyoptics.rendering.build import DropSheet, Job
+from skyoptics.rendering.build import Job
 from skyoptics.rendering.clouds import CrystalSheet
+from skyoptics.rendering.rain import DropSheet
 
 QUALITY = {"draft": 0.02, "normal": 0.01, "fine": 0.005}
 """Noise target by the name of the quality: light-weighted relative standard error of a table's bins, and rms error of the

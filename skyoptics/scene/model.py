@@ -16,9 +16,10 @@ from pydantic import AfterValidator, BeforeValidator, Discriminator, Field, Stri
 from skyoptics.errors import DomainError
 from skyoptics.light.zones import parse_time
 from skyoptics.scene.fields import listing, note, number, text
+from skyoptics.scene.ground import Ground
 from skyoptics.scene.particles import KINDS, AnyParticles, Drops, Particles
 from skyoptics.scene.table import Conflict, Table, distinct, one_turn
-from skyoptics.units import DEG, HPA, MM, NM
+from skyoptics.units import DEG, HPA, KM, MM, NM
 
 __all__ = ["KINDS", "Aim", "Camera", "Drops", "Light", "Medium", "Particles", "Picture", "Scene", "Table"]
 
@@ -144,6 +145,21 @@ class Medium(Table):
         Literal["air", "vacuum"],
         note("What refractive indices are taken relative to; moves a bow by 0.05 to 0.1 degrees"),
     ] = "air"
+    visual_range_km: Annotated[
+        float | None,
+        number(
+            0.05,
+            300,
+            "km",
+            "Distance at which a black hill keeps 2 % contrast: the haze in front of rain shafts; left out, it follows from the "
+            "air of [light]",
+        ),
+    ] = None
+
+    @property
+    def visual_range(self) -> float | None:
+        """Visual range [m]; None where the air of the light decides."""
+        return None if self.visual_range_km is None else self.visual_range_km * KM
 
 
 class Aim(Table):
@@ -232,9 +248,18 @@ class Camera(Table):
         note("What the picture's centre looks at: the sun, the point opposite it, or a direction"),
     ] = "antisolar"
 
+    eye_height_m: Annotated[
+        float,
+        number(0, 9000, "m", "Height of the eye above the ground around: lowers the horizon, looks over the rain"),
+    ] = 0.0
     cover_deg: Annotated[
         float, number(0, 20, "degrees", "Angular radius of a small dark disc held over the sun or moon; 0 for none")
     ] = 0.0
+
+    @property
+    def eye_height(self) -> float:
+        """Height of the eye above the ground [m]."""
+        return self.eye_height_m
 
     @property
     def cover(self) -> float:
@@ -454,6 +479,8 @@ class Scene(Table):
     """A whole scene: what lights it, what floats in the air, who looks, what comes out."""
 
     title: Annotated[str | None, text(200, "Title of the picture")] = None
+    author: Annotated[str | None, text(200, "Who made it; goes into captions and picture files")] = None
+    licence: Annotated[str | None, text(200, "Its licence, a line for captions and picture files")] = None
     look_for: Annotated[str | None, text(500, "One sentence on what to look for in the picture")] = None
     light: Annotated[Light, note("What lights the scene")]
     medium: Annotated[Medium, note("What the particles float in")] = Medium()
@@ -465,5 +492,6 @@ class Scene(Table):
         ),
     ]
     mixture: Annotated[Mixture | None, note("The cloud of those [[air]] tables that have a share")] = None
+    ground: Annotated[Ground | None, note("The land around; left out, it is level and even")] = None
     camera: Annotated[Camera, note("Who looks")] = Camera()
     picture: Annotated[Picture, note("What comes out")] = Picture()

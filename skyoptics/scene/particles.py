@@ -6,6 +6,7 @@ reference page and the schema then know it.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Mapping
 from pathlib import Path
 from typing import Annotated, Any, ClassVar, Literal
@@ -15,12 +16,13 @@ from pydantic_core import CoreSchema, core_schema
 
 from skyoptics.scene.fields import listing, note, number, text
 from skyoptics.scene.table import Conflict, Table, distinct
-from skyoptics.units import CELSIUS_ZERO, DEG, UM
+from skyoptics.units import CELSIUS_ZERO, DEG, KM, UM
 
 ORDERS = tuple(range(11))
+NEAR_KM, FAR_KM, TOP_KM = 2.0, 6.0, 2.5
 
 
-def _beside_scene(path: str | None, info: ValidationInfo) -> str | None:
+def beside_scene(path: str | None, info: ValidationInfo) -> str | None:
     """Make a path absolute, counted from the folder of the scene file."""
     folder = (info.context or {}).get("folder")
     return path if path is None or folder is None else str(Path(folder, path))
@@ -29,12 +31,16 @@ def _beside_scene(path: str | None, info: ValidationInfo) -> str | None:
 IndexTable = Annotated[
     str | None,
     text(1000, "CSV file of refractive index by wavelength, its path counted from the scene file; excludes index"),
-    AfterValidator(_beside_scene),
+    AfterValidator(beside_scene),
 ]
 Place = Annotated[
-    Literal["curtain", "layer"],
-    note("A curtain has the same optical depth in every direction of view, a layer is a level sheet overhead"),
+    Literal["curtain", "layer", "shaft"],
+    note(
+        "A curtain has the same optical depth in every direction of view, a layer is a level sheet overhead, a shaft is rain "
+        "between two distances and under a top, which weakens the light on its way through"
+    ),
 ]
+_Distance = Annotated[float, Field(ge=0, le=500)]
 CrystalPlace = Annotated[
     Literal["curtain", "layer", "slab"],
     note(
@@ -104,7 +110,7 @@ class Drops(Particles):
     spectrum: Annotated[
         str | None,
         text(1000, 'CSV file with sizes = "measured", its path counted from the scene file'),
-        AfterValidator(_beside_scene),
+        AfterValidator(beside_scene),
     ] = None
     spectrum_time: Annotated[str | None, text(100, "Which row in time of the spectrum; left out, all are averaged")] = (
         None
@@ -129,6 +135,26 @@ class Drops(Particles):
     path_m: Annotated[
         float | None, number(0.01, 1e6, "m", "Depth of the curtain along the line of sight, or thickness of the layer")
     ] = None
+    near_km: Annotated[
+        float | None, number(0, 500, "km", "Distance of the near side of a shaft, on the level", default=NEAR_KM)
+    ] = None
+    far_km: Annotated[
+        float | None, number(0, 500, "km", "Distance of the far side of a shaft, on the level", default=FAR_KM)
+    ] = None
+    top_km: Annotated[
+        float | None, number(0.01, 20, "km", "Height of the top of a shaft above the ground", default=TOP_KM)
+    ] = None
+    lit_km: Annotated[
+        tuple[_Distance, _Distance] | None,
+        Strict(False),
+        note("Between which distances the sun shines on a shaft; left out, everywhere", unit="km"),
+    ] = None
+    sunlit: Annotated[
+        float | None, number(0, 1, "", "Share of the sun's light that gets past the clouds to a shaft", default=1.0)
+    ] = None
+    shade: Annotated[
+        bool | None, note("Whether the drops of a shaft weaken the sunlight of those behind them; left out, they do")
+    ] = None
     place: Place = "curtain"
     below_horizon: BelowHorizon = False
 
@@ -136,6 +162,23 @@ class Drops(Particles):
     def radius(self) -> float:
         """Radius [m]."""
         return self.radius_um * UM
+
+    @property
+    def reach(self) -> tuple[float, float]:
+        """Level distances of a shaft's near and far side [m]."""
+        near = NEAR_KM if self.near_km is None else self.near_km
+        far = FAR_KM if self.far_km is None else self.far_km
+        return near * KM, far * KM
+
+    @property
+    def top(self) -> float:
+        """Height of a shaft's top [m]."""
+        return (TOP_KM if self.top_km is None else self.top_km) * KM
+
+    @property
+    def lit(self) -> tuple[float, float]:
+        """Level distances between which the sun shines on a shaft [m]."""
+        return (0.0, math.inf) if self.lit_km is None else (self.lit_km[0] * KM, self.lit_km[1] * KM)
 
     @property
     def canting(self) -> float:
@@ -158,7 +201,9 @@ class Drops(Particles):
         given = [key for key in ("liquid_water_g_m3", "concentration_per_m3") if values.get(key) is not None]
         if len(given) == 2:
             yield "concentration_per_m3", "cannot stand beside liquid_water_g_m3; keep one of the two"
-        if given and "path_m" in values and values["path_m"] is None:
+        yield from _shaft_conflicts(values)
+        shaft = values.get("place") == "shaft"
+        if given and not shaft and "path_m" in values and values["path_m"] is None:
             yield "path_m", f"is missing; {given[0]} needs it for an optical depth"
         if not given and values.get("path_m") is not None:
             yield "path_m", "needs liquid_water_g_m3 or concentration_per_m3 beside it"
@@ -171,6 +216,27 @@ class Drops(Particles):
                 "orders",
                 'Mie theory does not part the light by order; take method = "rays" or "airy", or leave orders out',
             )
+
+
+def _shaft_conflicts(values: Mapping[str, Any]) -> Iterator[Conflict]:
+    """Yield what goes wrong between the keys of a rain shaft."""
+    keys = ("near_km", "far_km", "top_km", "lit_km", "sunlit", "shade")
+    if values.get("place", "shaft") != "shaft":
+        for key in keys:
+            if values.get(key) is not None:
+                yield key, f'is for place = "shaft"; got place = {values["place"]!r}'
+        return
+    if values.get("place") == "shaft" and values.get("path_m") is not None:
+        yield "path_m", "a shaft's path is from near_km to far_km; leave it out"
+    if {"near_km", "far_km"} <= values.keys():
+        near = NEAR_KM if values["near_km"] is None else values["near_km"]
+        far = FAR_KM if values["far_km"] is None else values["far_km"]
+        if not far > near:
+            key = "far_km" if values["far_km"] is not None else "near_km"
+            yield key, f"the far side of a shaft lies beyond the near one; got near_km = {near:g}, far_km = {far:g}"
+    lit = values.get("lit_km")
+    if lit is not None and not lit[0] < lit[1]:
+        yield "lit_km", f"the first distance is the smaller one; got {lit[0]:g} and {lit[1]:g}"
 
 
 _Miller = Annotated[int, Field(ge=-9, le=9)]
@@ -265,7 +331,7 @@ class Crystals(Particles):
     tilt_table: Annotated[
         str | None,
         text(1000, "CSV file of the number of crystals by tilt, its path counted from the scene file"),
-        AfterValidator(_beside_scene),
+        AfterValidator(beside_scene),
     ] = None
     share: Annotated[
         float | None, number(0, 1e12, "", "Share in the cloud of [mixture], instead of an optical depth of its own")
@@ -283,7 +349,21 @@ class Crystals(Particles):
     ] = None
     index_table: IndexTable = None
     place: CrystalPlace = "layer"
+    height_km: Annotated[
+        float | None,
+        number(
+            0,
+            80,
+            "km",
+            "Height of a layer or slab above the observer: the air above it and below it dims its light; left out, none does",
+        ),
+    ] = None
     below_horizon: BelowHorizon = False
+
+    @property
+    def height(self) -> float | None:
+        """Height of the layer [m]; None where no air is to lie in front of it."""
+        return None if self.height_km is None else self.height_km * KM
 
     @property
     def diameter(self) -> float:
@@ -338,6 +418,8 @@ class Crystals(Particles):
             yield "tilt_table", 'is for tilt_law = "table"'
         if values.get("seen_from", "below") != "below" and values.get("place") == "curtain":
             yield "seen_from", "a curtain hangs all around; leave this out or take a layer or a slab"
+        if values.get("height_km") is not None and values.get("place") == "curtain":
+            yield "height_km", "a curtain hangs all around; leave this out or take a layer or a slab"
         if values.get("scatterings", 1) != 1 and values.get("place", "slab") != "slab":
             yield "scatterings", 'further scatterings are for place = "slab"'
 

@@ -1,9 +1,10 @@
 """Sky radiance on a grid of directions.
 
-    radiance = Σ over sources and sheets of irradiance · phase · amount + background,
+    radiance = Σ over sources and sheets of irradiance · phase · amount + background.
 
-the thin-layer sum: light is scattered once, and sheets neither shade each other nor the background. It holds while the
-amount is well below 1; `THIN` is where it is a tenth too bright (1 − exp(−a) ≈ a (1 − a/2)).
+What volumes do to each other's light and to the sky behind (`skyoptics.sky.volumes`) is in the amounts and in the background
+that are given. Curtains and thin layers are no volumes: their light is scattered once, and they neither shade each other nor
+the background. That holds while the amount is well below 1; `THIN` is where it is a tenth too bright (1 − exp(−a) ≈ a (1 − a/2)).
 """
 
 from __future__ import annotations
@@ -27,6 +28,10 @@ COVER_LIGHT = 0.02
 """Light from the dark side of a disc held over the sun ÷ the background."""
 
 
+Amount = Callable[[FloatArray, FloatArray, Source], FloatArray]
+"""Azimuth, elevation [rad], source → amount, shape (…, nλ) or (…, 1) [1]."""
+
+
 class Scatterer(Protocol):
     """What answers how much light goes where; see `skyoptics.optics.axisymmetric`."""
 
@@ -48,13 +53,13 @@ class Sheet:
     scatterers : tuple of Scatterer
         What they do to the light of each source.
     amount : callable
-        Elevation of the line of sight [rad] and source → path integral of the reference extinction [1], weighted by what
-        gets through where the particles weaken the light themselves.
+        Azimuth and elevation of the line of sight [rad] and source → path integral of the reference extinction, weighted by
+        what gets to the particles and from them to the observer, shape (…, nλ) or, where it is grey, (…, 1) [1].
     """
 
     name: str
     scatterers: tuple[Scatterer, ...]
-    amount: Callable[[FloatArray, Source], FloatArray]
+    amount: Amount
 
 
 class Behind(Protocol):
@@ -122,14 +127,14 @@ def radiance(
         Bin means [W m⁻² sr⁻¹ nm⁻¹]; nan outside the image.
     """
     vectors = directions.vectors(rows)
-    _, elevation = azimuth_elevation(vectors)
+    azimuth, elevation = azimuth_elevation(vectors)
     behind = background.radiance(vectors)
     if polariser is not None:
         behind *= 0.5
     total = behind.copy() if cover > 0.0 else behind
     for sheet in sheets:
         for source, scatterer in zip(sources, sheet.scatterers, strict=True):
-            amount = sheet.amount(elevation, source)[..., None]
+            amount = sheet.amount(azimuth, elevation, source)
             if polariser is None:
                 light = scatterer.phase(source, directions, rows)
             else:
@@ -162,13 +167,13 @@ def stokes(
 ) -> FloatArray:
     """Return the Stokes vector of radiance, shape (ny, nx, nλ, 4), in each direction's meridian frame."""
     vectors = directions.vectors(rows)
-    _, elevation = azimuth_elevation(vectors)
+    azimuth, elevation = azimuth_elevation(vectors)
     total = np.zeros((*elevation.shape, len(sources[0].irradiance), 4))
     behind = background.radiance(vectors)
     total[..., 0] = behind
     for sheet in sheets:
         for source, scatterer in zip(sources, sheet.scatterers, strict=True):
-            amount = sheet.amount(elevation, source)[..., None, None]
+            amount = sheet.amount(azimuth, elevation, source)[..., None]
             total += scatterer.phase(source, directions, rows, stokes=True) * source.irradiance[:, None] * amount
     if cover > 0.0:
         seen = _seen_past(directions, rows, sources[0], cover)

@@ -19,7 +19,8 @@ from skyoptics.units import DEG, NM, ArrayLike, FloatArray
 
 CONTRAST = 0.02
 """Contrast at the visual range (Koschmieder; American Meteorological Society, *Glossary of Meteorology*)."""
-_LONGEST = float(-np.log(CONTRAST) * MOLECULE_HEIGHT / rayleigh_depth(550.0 * NM))  # visual range of pure air, 340 km
+LONGEST = float(-np.log(CONTRAST) * MOLECULE_HEIGHT / rayleigh_depth(550.0 * NM))
+"""Visual range of pure air, 340 km [m]."""
 
 
 @dataclass(frozen=True)
@@ -46,9 +47,15 @@ class Haze:
     height: float = 2000.0
 
     def __post_init__(self) -> None:
-        within("visual range", self.visual_range, 10.0, _LONGEST, "km", 1e3)
+        within("visual range", self.visual_range, 10.0, LONGEST, "km", 1e3)
         within("haze exponent", self.exponent, -1.0, 4.0)
         within("scale height of haze", self.height, 100.0, 1e4, "m")
+
+    @classmethod
+    def of(cls, air: Air) -> Haze:
+        """Return the haze that an atmosphere has at the ground: extinction is its vertical depth ÷ its scale height."""
+        green = air.aerosol_depth_550 / air.aerosol_height + float(rayleigh_depth(550.0 * NM)) / MOLECULE_HEIGHT
+        return cls(min(float(-np.log(CONTRAST)) / green, LONGEST), air.aerosol_exponent, air.aerosol_height)
 
     def extinction(self, bins: Bins, height: ArrayLike = 0.0) -> FloatArray:
         """Return the extinction of haze and molecules together, shape (…, nλ), at heights (…) [m⁻¹]."""

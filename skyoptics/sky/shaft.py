@@ -16,6 +16,7 @@ rain in an even field of radiance J shines with J where it is thick.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 
@@ -51,6 +52,29 @@ class Factors:
     front: FloatArray
     behind: FloatArray
     airlight: FloatArray
+
+
+class Inside(NamedTuple):
+    """What happens in a shaft and in front of it, by elevation, shapes broadcast to (…, nλ).
+
+    Parameters
+    ----------
+    front : ndarray
+        What comes through the air between observer and rain [1].
+    clear, air_through : ndarray
+        What comes through the rain's drops, and through the air between them [1].
+    rain, air : ndarray
+        Share of the radiance of thick rain, and of thick air, that drops and air in the rain add, seen from the near wall [1].
+    weakened : ndarray
+        Amount with the air in the rain ÷ without it [1].
+    """
+
+    front: FloatArray
+    clear: FloatArray
+    air_through: FloatArray
+    rain: FloatArray
+    air: FloatArray
+    weakened: FloatArray
 
 
 @dataclass(frozen=True)
@@ -170,6 +194,23 @@ class Shaft:
             `skyoptics.sky.haze.split`. Lines that miss the rain have the haze before its near wall in front of them. nan
             where the elevation is.
         """
+        part = self.inside(bins, elevation, sun_elevation, haze, azimuth)
+        airlight = part.front * part.rain * veil + (1.0 - part.front + part.front * part.air) * air_radiance
+        amount = self.amount(elevation, azimuth, sun_elevation)[..., None] * part.weakened
+        return Factors(amount, part.front, part.clear * part.air_through, airlight)
+
+    def amount(self, elevation: ArrayLike, azimuth: ArrayLike, sun_elevation: float) -> FloatArray:
+        """Return the amount where there is no haze, shape (…); arguments as in `factors`."""
+        elevation, azimuth = np.broadcast_arrays(
+            np.asarray(elevation, dtype=np.float64), np.asarray(azimuth, dtype=np.float64)
+        )
+        reach = self.reach(elevation)
+        return self._amount(elevation, azimuth, sun_elevation, *reach, np.full(1, self._weakening))[..., 0]
+
+    def inside(
+        self, bins: Bins, elevation: ArrayLike, sun_elevation: float, haze: Haze | None = None, azimuth: ArrayLike = 0.0
+    ) -> Inside:
+        """Return what happens in the shaft and in front of it; arguments as in `factors`."""
         elevation, azimuth = np.broadcast_arrays(
             np.asarray(elevation, dtype=np.float64), np.asarray(azimuth, dtype=np.float64)
         )
@@ -177,73 +218,40 @@ class Shaft:
         weakening = np.full((*elevation.shape, 1), self._weakening)
         scattering = np.zeros((*elevation.shape, 1))
         front = np.ones((*elevation.shape, 1))
+        weakened = np.ones((*elevation.shape, 1))
         if haze is not None:
             middle = self.eye_height + 0.5 * (enter + leave) * np.sin(elevation)
             scattering = haze.extinction(bins, np.clip(middle, 0.0, None))
             front = haze.transmission(bins, elevation, enter, self.eye_height)
+            amounts = [
+                self._amount(elevation, azimuth, sun_elevation, enter, leave, along)
+                for along in (weakening + scattering, weakening)
+            ]
+            some = amounts[1] > 0.0
+            weakened = np.where(some, amounts[0] / np.where(some, amounts[1], 1.0), 1.0)
         front = np.where(np.isnan(elevation)[..., None], np.nan, front)
-        along, length = weakening + scattering, (leave - enter)[..., None]
-        amount = self._amount(elevation, azimuth, sun_elevation, enter, leave, along)
-        airlight = front * (weakening * length * mean_exponential(along * length)) * veil
-        if haze is not None:
-            within_rain = front * (scattering * length * mean_exponential(along * length))
-            airlight = airlight + (1.0 - front + within_rain) * air_radiance
-        return Factors(amount, front, np.exp(-along * length), airlight)
-
-    def tabulated(
-        self,
-        bins: Bins,
-        elevation: ArrayLike,
-        sun_elevation: float,
-        azimuth: ArrayLike = 0.0,
-        haze: Haze | None = None,
-        air_radiance: ArrayLike = 0.0,
-        veil: ArrayLike = 0.0,
-    ) -> Factors:
-        """Return `factors` for many lines of sight, of all but the amount from a table by elevation.
-
-        Parameters
-        ----------
-        bins, elevation, sun_elevation, azimuth, haze
-            As in `factors`.
-        air_radiance, veil : array_like, shape (nλ,)
-            The same on all lines of sight.
-
-        Returns
-        -------
-        Factors
-            Within 0.002 of `factors`; haze in the rain weakens the amount as it does straight above the antisolar point.
-        """
-        elevation, azimuth = np.broadcast_arrays(
-            np.asarray(elevation, dtype=np.float64), np.asarray(azimuth, dtype=np.float64)
+        length = (leave - enter)[..., None]
+        held = length * mean_exponential((weakening + scattering) * length)
+        return Inside(
+            front,
+            np.exp(-weakening * length),
+            np.exp(-scattering * length),
+            weakening * held,
+            scattering * held,
+            weakened,
         )
-        nodes = self._nodes()
-        clear = self.factors(bins, nodes, sun_elevation)
-        table = self.factors(bins, nodes, sun_elevation, 0.0, haze, air_radiance, veil)
-        some = clear.amount > 0.0
-        share = np.where(some, table.amount / np.where(some, clear.amount, 1.0), 1.0)
-        amount = self._amount(elevation, azimuth, sun_elevation, *self.reach(elevation), np.full(1, self._weakening))
-        place = np.interp(elevation, nodes, np.arange(len(nodes), dtype=np.float64))
-        lost = np.isnan(place)
-        cell = np.minimum(np.where(lost, 0.0, place).astype(np.int64), len(nodes) - 2)
-        part = (place - cell)[..., None]
 
-        def read(values: FloatArray) -> FloatArray:
-            return np.asarray(values[cell] + part * np.diff(values, axis=0)[cell])
-
-        return Factors(amount * read(share), read(table.front), read(table.behind), read(table.airlight))
+    def nodes(self) -> FloatArray:
+        """Return elevations for a table [rad]: close at the horizon, and one on each corner of the rain."""
+        even = np.linspace(-1.0, 1.0, 1921)
+        ends = np.array([self.near, self.far, *(end for end in self.lit if np.isfinite(end))])
+        corners = [np.arctan2(height - self.eye_height, ends) for height in (0.0, self.top)]
+        return np.unique(np.concatenate([0.5 * np.pi * even * np.abs(even), *corners]))
 
     @property
     def _weakening(self) -> float:
         """Extinction that beams feel [m⁻¹]."""
         return EVENTS * self.extinction
-
-    def _nodes(self) -> FloatArray:
-        """Return elevations of a table [rad]: close at the horizon, and one on each corner of the rain."""
-        even = np.linspace(-1.0, 1.0, 1921)
-        ends = np.array([self.near, self.far, *(end for end in self.lit if np.isfinite(end))])
-        corners = [np.arctan2(height - self.eye_height, ends) for height in (0.0, self.top)]
-        return np.unique(np.concatenate([0.5 * np.pi * even * np.abs(even), *corners]))
 
     def _amount(
         self,

@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from skyoptics.figures.palette import CATEGORICAL, wavelength_colour
 from skyoptics.study import colours
 from skyoptics.study.result import Study
 from skyoptics.units import DEG
@@ -58,7 +59,7 @@ def metrics(study: Study) -> Figure:
                     found[m, :, w],
                     STYLES[m],
                     marker="." if len(value) < 40 else None,
-                    color=_line_colour(wavelength),
+                    color=wavelength_colour(wavelength),
                     label=f"{method}, {wavelength:g} nm",
                 )
         panel.set(xlabel=LABELS[study.question.sweep], ylabel=label)
@@ -99,8 +100,7 @@ def chromaticity(study: Study) -> Figure:
         panel.plot(*white, "k+")
         for number, s in enumerate(_some(len(study.steps), MOST_LINES)):
             xy = colours.chromaticity(study.map_xyz[m, s])
-            shade = str(0.75 * number / MOST_LINES)
-            panel.plot(*xy.T, color=shade, linewidth=1.0, label=f"{study.steps[s].value:.4g}")
+            panel.plot(*xy.T, color=CATEGORICAL[number], linewidth=1.0, label=f"{study.steps[s].value:.4g}")
         panel.set(xlabel="x", ylabel="y" if m == 0 else "", title=method, aspect="equal")
         panel.legend(title=LABELS[study.question.sweep], fontsize="small", frameon=False)
     return figure
@@ -117,7 +117,7 @@ def curves(study: Study) -> Figure:
                 study.map_angle / DEG,
                 study.map_intensity[m, s, w],
                 STYLES[m],
-                color=f"C{number}",
+                color=CATEGORICAL[number],
                 linewidth=1.0,
                 label=f"{study.steps[s].value:.4g}, {method}",
             )
@@ -170,15 +170,3 @@ def _edges(middle: Any, ratios: bool) -> Any:
 def _some(count: int, most: int) -> list[int]:
     """Return up to `most` places spread over 0 … count − 1."""
     return sorted({round(place) for place in np.linspace(0, count - 1, min(count, most))})
-
-
-def _line_colour(wavelength_nm: float) -> Any:
-    """Return a display colour for a wavelength: its own hue, dark enough for a line on white."""
-    from skyoptics.colour import display, gamut, observer
-    from skyoptics.optics.bins import Bins
-
-    xyz = observer.weights(Bins.lines([wavelength_nm * 1e-9]))[0]
-    if not xyz.max() > 0.0:
-        return "k"
-    linear = gamut.to_gamut((0.25 * xyz / xyz.max())[np.newaxis] @ display.XYZ_TO_RGB.T)[0]
-    return tuple(np.clip(display.encode(linear), 0.0, 1.0).tolist())

@@ -20,7 +20,12 @@ def png_read(path):
 def test_files_and_last_line(command, tiny, tmp_path):
     done = command("render", tiny, "--out", "pictures", "--seed", 7, "--quality", "draft", "--data", "--threads", 1)
     assert done.code == 0
-    assert sorted(p.name for p in (tmp_path / "pictures").iterdir()) == ["tiny.json", "tiny.nc", "tiny.png"]
+    assert sorted(p.name for p in (tmp_path / "pictures").iterdir()) == [
+        "tiny.caption.txt",
+        "tiny.json",
+        "tiny.nc",
+        "tiny.png",
+    ]
     assert done.out.splitlines()[-1].startswith(os.path.join("pictures", "tiny.png") + ": ")
     assert "primary bow 41.8" in done.out
     width, height, _, info = png_read("pictures/tiny.png")

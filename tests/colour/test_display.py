@@ -228,6 +228,15 @@ def test_highlights_keep_their_chromaticity(components):
         np.testing.assert_allclose(bent, linear * factor, rtol=1e-12, atol=1e-300)
 
 
+def test_what_is_far_over_exposed_is_white():
+    orange = np.array([1.0, 0.6, 0.2])
+    levels = np.geomspace(1.0, 1e6, 200)
+    bent = display.bend_highlights(levels[:, None] * orange)
+    assert np.all(np.diff(bent[:, 2]) > -1e-12)  # grows paler, never darker
+    assert np.all(np.diff(bent, axis=0) < 0.05)  # without a step
+    np.testing.assert_allclose(bent[levels >= display.BLEACH_TO], 1.0, atol=1e-6)
+
+
 def test_grey_highlights_follow_the_shoulder():
     grey = np.linspace(0.0, 5.0, 101)
     bent = display.bend_highlights(np.repeat(grey[:, None], 3, axis=1))

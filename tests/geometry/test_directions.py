@@ -95,3 +95,25 @@ def test_frame_about_is_a_rotation():
 def test_too_wide_is_refused_in_words():
     with pytest.raises(DomainError, match="160°"):
         photograph("rectilinear", 2e-3, (36e-3, 24e-3), (200, 300), ROTATION)
+
+
+@pytest.mark.parametrize("name", [*LENSES, "panorama"])
+def test_a_part_sees_what_the_same_pixels_of_the_whole_see(name):
+    """A definition, no source: cutting a picture and cutting its grid are the same; bits apart on a panorama alone."""
+    if name == "panorama":
+        whole = panorama(2 * np.pi, np.pi, (90, 180), 30 * DEG, 10 * DEG, 15 * DEG)
+    else:
+        whole = grid(name)
+    part = whole.crop(slice(20, 61), slice(-50, None))
+    assert part.shape == (41, 50)
+    expected = whole.vectors()[20:61, -50:]
+    assert np.allclose(part.vectors(), expected, rtol=0.0, atol=1e-15, equal_nan=True)
+    assert np.allclose(part.solid_angle(), whole.solid_angle()[20:61, -50:], rtol=1e-9, atol=0.0)
+    row, column = part.project(whole.vectors()[45, whole.shape[1] - 30])
+    assert np.ravel([row, column]) == pytest.approx([25.0, 20.0], abs=0.01, nan_ok=np.isnan(expected[25, 20]).any())
+
+
+@pytest.mark.parametrize("rows", [slice(5, 5), slice(300, 400), slice(0, 50, 2)])
+def test_a_part_without_pixels_is_refused(rows):
+    with pytest.raises(DomainError, match="part of a grid"):
+        grid("rectilinear").crop(rows, slice(None))

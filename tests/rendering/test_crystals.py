@@ -299,7 +299,12 @@ def test_preview_and_noise_map(command, tiny, tmp_path, monkeypatch, store):
     done = command("render", tiny, "--quality", "draft", "--noise-map", "--json")
     assert done.code == 0
     assert seen == [True]
-    assert sorted(p.name for p in (tmp_path / "outputs/tiny").iterdir()) == ["tiny.json", "tiny.noise.png", "tiny.png"]
+    assert sorted(p.name for p in (tmp_path / "outputs/tiny").iterdir()) == [
+        "tiny.caption.txt",
+        "tiny.json",
+        "tiny.noise.png",
+        "tiny.png",
+    ]
     assert json.loads(done.out)["lightness_error"] > 0
 
 

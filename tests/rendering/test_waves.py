@@ -131,7 +131,7 @@ def test_a_measured_spectrum_and_liquid_water(tmp_path):
         "liquid_water_g_m3 = 0.5\npath_m = 500\n[camera]\nfocal_mm = 20\n[picture]\nwavelengths_nm = [550]\n"
     )
     job = build(from_text(text, folder=tmp_path), "test")
-    depth = float(job.sheets[0].amount(np.array(0.1), job.sources[0]))
+    depth = float(job.sheets[0].amount(np.array(0.0), np.array(0.1), job.sources[0])[0])
     # τ = 2π⟨r²⟩ N L = 3 LWC L / (2 ρ r_eff), the large-drop limit of extinction (van de Hulst 1957, §8.22)
     assert depth == pytest.approx(1.5 * 0.5e-3 * 500 / (1000.0 * job.sheets[0].radius), rel=1e-3)
 

@@ -122,7 +122,7 @@ VALUES = [
     ),
     ("medium", "roll_deg = 3", "medium.roll_deg: unknown key here; it belongs in camera.aim"),
     ("picture", "focal_nm = 3", "picture.focal_nm: unknown key; did you mean focal_mm, which belongs in [camera]?"),
-    ("medium", '"q\\u202Eq" = 3', 'medium."q�q": unknown key; the keys here are kind'),
+    ("medium", '"q\\u202Eq" = 3', 'medium."q�q": unknown key; the keys here are kind, visual_range_km'),
     # keys that do not go together
     ("air", 'index = 1.3\nindex_table = "n.csv"', "air.1.index_table: cannot stand beside index; keep one of the two"),
     (

@@ -26,7 +26,7 @@ def test_rows_say_what_is_allowed():
     assert rows["kind"].default == "required"
     assert rows["index"].default == "–"
     assert {row.key: row.default for row in describe("camera")}["sensor_mm"] == "[36, 24]"
-    assert [row.key for row in describe("scene")] == ["title", "look_for"]
+    assert [row.key for row in describe("scene")] == ["title", "author", "licence", "look_for"]
     with pytest.raises(DomainError, match="did you mean camera"):
         describe("camra")
 

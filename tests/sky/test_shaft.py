@@ -226,21 +226,6 @@ def test_shapes_and_nan():
     assert np.all(factors.behind[1, :2] == 1.0)
 
 
-@pytest.mark.parametrize("haze", [None, Haze(5e3)])
-@pytest.mark.parametrize("eye", [2.0, 500.0])
-def test_a_table_is_as_good(haze, eye):
-    shaft = Shaft(1e3, 4e3, 2e3, 1e-3, eye_height=eye, lit=(1500.0, np.inf))
-    elevation = np.concatenate([np.linspace(-90, 90, 3001), np.linspace(-0.2, 0.2, 1001), [np.nan]]) * DEG
-    lights = haze, np.array([3.0, 2.0, 1.0]), np.ones(3)
-    exact = shaft.factors(LINES, elevation, 0.3, 0.0, *lights)
-    table = shaft.tabulated(LINES, elevation, 0.3, 0.0, *lights)
-    for name in ("amount", "front", "behind", "airlight"):
-        ours, expected = np.broadcast_arrays(getattr(table, name), getattr(exact, name))
-        np.testing.assert_allclose(ours, expected, rtol=0, atol=2e-3 * np.nanmax(expected))
-    aside = shaft.factors(LINES, 0.2, 0.3, 1.0).amount
-    np.testing.assert_allclose(shaft.tabulated(LINES, 0.2, 0.3, 1.0).amount, aside, rtol=1e-12)
-
-
 def test_the_upper_edge_is_no_step_in_front():
     """Lines just over and just under the top differ by nothing but the rain itself."""
     edge = np.arctan2(1998.0, 1000.0)

@@ -1,0 +1,1 @@
+"""The words of pictures and figures in English, German, Spanish and French."""
