@@ -70,6 +70,7 @@ def command(
     from skyoptics.rendering.frames import check, frame_count
     from skyoptics.rendering.reel import Film, Reel
     from skyoptics.rendering.run import Settings, usable_cores
+    from skyoptics.rendering.vary_words import caption, quantity
 
     count = frame_count(seconds, fps)
     video.check(out, fps)
@@ -105,8 +106,8 @@ def command(
         "seed": seed,
         "frames_kept_in": reel.folder.name if keep_frames else None,
     }
-    first, last = (vary.caption(step, what) for step in (steps[0], steps[-1]))
-    line = f"{out}: {count} frames, {vary.quantity(steps[0], what)} {first} to {last}"
+    first, last = (caption(step, what) for step in (steps[0], steps[-1]))
+    line = f"{out}: {count} frames, {quantity(steps[0], what)} {first} to {last}"
     if as_json:
         click.echo(json.dumps(report, ensure_ascii=False))
         click.echo(line, err=True)
@@ -170,7 +171,7 @@ def _text(
     """Return the metadata of a film and its frames; nothing private in it."""
     from skyoptics import __version__
     from skyoptics.colour.metadata import strip_private
-    from skyoptics.rendering import vary
+    from skyoptics.rendering.vary_words import caption, quantity
 
     first, last = ends
     words = ["skyoptics", "animate", scene.name, "--vary", what.words, "--seconds", f"{seconds:g}", "--fps", f"{fps:g}"]
@@ -180,8 +181,6 @@ def _text(
     return {
         "Title": film.scenes[0].title or scene.stem,
         "Software": f"skyoptics {__version__}",
-        "Description": strip_private(
-            f"{vary.quantity(first, what)} {vary.caption(first, what)} to {vary.caption(last, what)}"
-        ),
+        "Description": strip_private(f"{quantity(first, what)} {caption(first, what)} to {caption(last, what)}"),
         "Command": strip_private(" ".join(words)),
     }

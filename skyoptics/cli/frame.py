@@ -92,15 +92,17 @@ class AimWords(click.ParamType[Any]):
 @click.option("--force", is_flag=True, help="Replace a file that is there.")
 @click.option("--json", "as_json", is_flag=True, help="Print the answer as JSON on stdout.")
 def command(as_json: bool, preview: Path | None, force: bool, **options: Any) -> None:
-    r"""Where a bow or halo falls in the frame of a lens, which lens holds it, with a preview.
+    """Where a bow or halo falls in the frame of a lens, which lens holds it, with a preview.
 
     "missing" is the length of the arc (for feet: of the horizon between them) less what of it the frame holds.
 
     \b
-    Example: skyoptics frame --sun-azimuth-deg 270 --sun-elevation-deg 10 --focal-mm 20
+    Example: skyoptics frame --sun-azimuth-deg 270 --sun-elevation-deg 10
+                 --focal-mm 20 --hold feet
              skyoptics frame --lat 47.2 --lon 8.9 --time 2027-05-12T19:40+02:00
-                 --focal-mm 24 --orientation portrait --panorama --preview plan.png
-    """
+                 --focal-mm 24 --orientation portrait --panorama
+                 --preview plan.png
+    """  # noqa: D301
     from skyoptics.planning import features, shot, shot_words
     from skyoptics.planning.aiming import Aim
     from skyoptics.planning.panorama import OVERLAP

@@ -43,7 +43,7 @@ def command(
     seed: int,
     threads: int | None,
 ) -> None:
-    r"""Make one HTML page of SCENE, a TOML file or the name of an example scene.
+    """Make one HTML page of SCENE, a TOML file or the name of an example scene.
 
     Pictures stand under a slider; azimuth, elevation, scattering angle, spectrum and arc are read under the pointer or by
     arrow keys; the scattering curve stands beside. The file needs no server and no network, and has less than 10 MB.
@@ -51,7 +51,7 @@ def command(
     \b
     Example: skyoptics page double-bow --vary light.elevation_deg=5,15,25 --out bow.html
              skyoptics page fogbow-glory --vary air.1.radius_um=5,10,20,40 --exposure each --lang de
-    """
+    """  # noqa: D301
     from skyoptics.page.make import make, prepare
     from skyoptics.page.varied import varied
     from skyoptics.scene.files import safe_name

@@ -95,13 +95,13 @@ LABELS = click.option(
 def drop(
     svg: Path | None, png: Path | None, as_json: bool, white: bool, fan: int | None, index: float | None, **options: Any
 ) -> None:
-    r"""Draw rays through a spherical drop of water, and print their angles and shares.
+    """Draw rays through a spherical drop of water, and print their angles and shares.
 
     \b
     Example: skyoptics paths drop --orders 2 --impact 0.86 --svg drop.svg
              skyoptics paths drop --orders 2 --fan 11 --png fan.png
              skyoptics paths drop --orders 2,3 --white --svg colours.svg
-    """
+    """  # noqa: D301
     if white and fan:
         raise click.UsageError("--fan and --white do not go together: a fan of white light would hide itself")
     if white and index is not None:
@@ -167,12 +167,12 @@ def crystal(
     medium: str,
     **options: Any,
 ) -> None:
-    r"""Draw the way a named arc's light takes through its crystal, and print angles and shares face by face.
+    """Draw the way a named arc's light takes through its crystal, and print angles and shares face by face.
 
     \b
     Example: skyoptics paths crystal --arc circumzenithal --sun-elevation-deg 20 --svg arc.svg
              skyoptics paths crystal --arc parhelia-120 --sun-elevation-deg 20 --angles --png arc.png
-    """
+    """  # noqa: D301
     _check(svg, png)
     from skyoptics.figures import crystal_passage, ray_crystal
     from skyoptics.materials import index as material

@@ -9,6 +9,7 @@ from typing import Any
 import click
 
 from skyoptics.cli.options import AzimuthElevation, SceneFile, Word, json_option, lang_option, sampling_options
+from skyoptics.cli.printed import Paper
 
 
 @click.command("render", short_help="Scene file to picture and report.")
@@ -48,6 +49,7 @@ from skyoptics.cli.options import AzimuthElevation, SceneFile, Word, json_option
 @click.option(
     "--sheet", "on_sheet", is_flag=True, help="All values of --vary on one comparison sheet, exposure and scale shared."
 )
+@click.option("--print", "print_size", type=Paper(), help="Instead, a sheet of paper at 300 dpi: margins, caption, scale.")
 @json_option
 @sampling_options
 def command(
@@ -68,6 +70,7 @@ def command(
     explain: tuple[float, float] | None,
     vary: str | None,
     on_sheet: bool,
+    print_size: str | None,
     as_json: bool,
     quality: str,
     seed: int,
@@ -80,11 +83,17 @@ def command(
              skyoptics render mixed-whole-sky --only circumzenithal
              skyoptics render mixed-whole-sky --explain 180,42.5
              skyoptics render double-bow --vary air.1.radius_um=10,50,250,1000 --sheet
+             skyoptics render double-bow --print a3
     """  # noqa: D301
     if vary is not None or on_sheet:
         from skyoptics.cli import varied
 
         varied.run(click.get_current_context().params)
+        return
+    if print_size is not None:
+        from skyoptics.cli import printed
+
+        printed.run(click.get_current_context().params)
         return
     if visibility and only is not None:
         raise click.UsageError("--visibility asks about the whole picture; leave --only out")

@@ -37,7 +37,7 @@ def run(given: Mapping[str, Any]) -> None:
     for name, option in refused.items():
         if given.get(name):
             raise click.UsageError(
-                f"{option} does not go with --vary{' --sheet' if given['sheet'] else ''}; leave it out"
+                f"{option} does not go with --vary{' --sheet' if given['on_sheet'] else ''}; leave it out"
             )
     from skyoptics.rendering import output, panels, vary
     from skyoptics.rendering.run import Settings, usable_cores

@@ -33,6 +33,8 @@ RADIAL = 0
 CYLINDRICAL = 1
 DEGREE = 16
 PACKED_LENGTH = 40
+_AT_ONCE = 1 << 19
+"""Pixels whose corners are held at once: a picture for print has tens of millions."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -216,10 +218,15 @@ class Directions:
             bottom = np.clip(latitude - latitude_step / 2.0, -np.pi / 2.0, np.pi / 2.0)
             band = abs(longitude_step) * (np.sin(top) - np.sin(bottom))
             return np.repeat(band[:, None], self.shape[1], axis=1)
-        edges = np.concatenate([index - 0.5, index[-1:] + 0.5])[:, None]
-        corner = self.unproject(edges, np.arange(self.shape[1] + 1, dtype=np.float64)[None, :] - 0.5)
-        a, b, c, d = corner[:-1, :-1], corner[:-1, 1:], corner[1:, 1:], corner[1:, :-1]
-        return np.nan_to_num(_triangle(a, b, c) + _triangle(a, c, d))
+        solid = np.empty((index.size, self.shape[1]))
+        side = np.arange(self.shape[1] + 1, dtype=np.float64)[None, :] - 0.5
+        step = max(1, _AT_ONCE // self.shape[1])
+        for start in range(0, index.size, step):
+            part = index[start : start + step]
+            corner = self.unproject(np.concatenate([part - 0.5, part[-1:] + 0.5])[:, None], side)
+            a, b, c, d = corner[:-1, :-1], corner[:-1, 1:], corner[1:, 1:], corner[1:, :-1]
+            solid[start : start + step] = np.nan_to_num(_triangle(a, b, c) + _triangle(a, c, d))
+        return solid
 
     def pixel_size(self, rows: slice = slice(None)) -> FloatArray:
         """Return the side of a square of each pixel's solid angle, shape (ny, nx) [rad].
@@ -230,7 +237,8 @@ class Directions:
         solid = self.solid_angle(rows)
         if self.kind == CYLINDRICAL:
             return np.sqrt(solid) if self.shape[1] > 1 else np.full_like(solid, self.map[3])
-        return np.sqrt(np.where(solid > 0.0, solid, self.map[0] ** -2))
+        solid[~(solid > 0.0)] = self.map[0] ** -2
+        return np.sqrt(solid, out=solid)
 
     def coarse(self, side: int) -> Directions:
         """Return the grid whose cells are side · side pixels of this one, the first with its corner in the first pixel."""

@@ -39,7 +39,7 @@ LIMIT = 10_000_000
 """Bytes that a page may have: a phone on a slow line still gets it."""
 QUALITIES = (92, 87, 82, 76, 70, 62)
 """JPEG qualities tried, the best that fits is taken."""
-LEAST = 0.02
+LEAST = 0.012
 """Bytes a pixel of the emptiest picture as JPEG takes (measured on an even sky)."""
 SCRIPTS = ("sky.js", "graphs.js", "page.js")
 FINE = 0.03

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from skyoptics.errors import DomainError
-from skyoptics.rendering import vary
+from skyoptics.rendering import vary, vary_words
 from skyoptics.scene.load import load
 from skyoptics.scene.model import Scene
 from skyoptics.words.table import keys, say
@@ -71,11 +71,11 @@ def varied(path: Path, overrides: Sequence[str], words: str | None, lang: str) -
     steps = vary.steps(path, overrides, asked)
     last = asked.key.rpartition(".")[2]
     own = f"varied.{last}" in keys() and not asked.key.startswith("camera.aim.")
-    title = say(f"varied.{last}", lang) if own else vary.quantity(steps[0], asked, lang)
+    title = say(f"varied.{last}", lang) if own else vary_words.quantity(steps[0], asked, lang)
     return Varied(
         tuple(step.scene for step in steps),
         asked.key,
         title[:1].upper() + title[1:],
         tuple(step.text for step in steps),
-        tuple(vary.caption(step, asked, lang) for step in steps),
+        tuple(vary_words.caption(step, asked, lang) for step in steps),
     )

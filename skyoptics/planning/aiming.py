@@ -74,7 +74,7 @@ def shortest_focal(lens_name: str, sensor: Sensor) -> float:
 
 
 def best_aim(lens_name: str, sensor: Sensor, wanted: Held) -> Aim:
-    """Return the unrolled aim that allows the longest focal length."""
+    """Return the unrolled aim that allows the longest focal length; if no lens of the kind holds it, towards the middle."""
     elevation = np.linspace(-np.pi / 2.0, np.pi / 2.0, round(np.pi / _SCAN) + 1)
     best: tuple[float, Aim] | None = None
     for azimuth in (wanted.middle, float(np.mod(wanted.middle + np.pi, 2.0 * np.pi))):
@@ -95,7 +95,10 @@ def best_aim(lens_name: str, sensor: Sensor, wanted: Held) -> Aim:
                 top, found = float(elevation[hill]), middle
             if best is None or found > best[0] * (1.0 + 1e-12):
                 best = found, Aim(azimuth, top)
-    return Aim(wanted.middle, 0.0) if best is None else best[1]
+    if best is None or best[0] < shortest_focal(lens_name, sensor):
+        height = np.arcsin(np.clip(wanted.points[:, 2], -1.0, 1.0))
+        return Aim(wanted.middle, 0.5 * float(height.min() + height.max()))
+    return best[1]
 
 
 def image_factor(lens_name: str, forward: FloatArray) -> FloatArray:

@@ -19,6 +19,8 @@ HOLDS = ("whole", "feet", "pair")
 """What may be asked for."""
 
 _STEP = 0.05 * DEG
+_EVEN = 1e-3
+"""Share by which points must lean to the side opposite the sun to be counted there: a ring around the zenith does not."""
 _UP = -1e-12
 """Elevation from which a point counts as above the horizon [rad]; rounding is not."""
 
@@ -157,7 +159,7 @@ def _pair(spots: FloatArray, hold: str, middle: float) -> Held:
 def _middle(points: FloatArray, sun_azimuth: float) -> float:
     """Return the azimuth of the sun, or that opposite it, whichever most of the points lie towards."""
     towards = float(np.mean(points @ direction(sun_azimuth, 0.0)))
-    return float(np.mod(sun_azimuth + (np.pi if towards < -1e-9 else 0.0), 2.0 * np.pi))
+    return float(np.mod(sun_azimuth + (np.pi if towards < -_EVEN else 0.0), 2.0 * np.pi))
 
 
 def _offset(points: FloatArray, middle: float) -> FloatArray:

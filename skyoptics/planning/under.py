@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any, Literal, cast
 
 import numpy as np
 
+from skyoptics.errors import DomainError
 from skyoptics.planning.view import View
 from skyoptics.units import DEG, MM, FloatArray
 
@@ -27,6 +28,11 @@ def refitted(scene: Scene, view: View, sun_azimuth: float, sun_elevation: float,
         [rad]
     body : {"sun", "moon"}
         What shines; a moon keeps the phase of a scene with a moon, else it is full.
+
+    Raises
+    ------
+    DomainError
+        For a lens that is too short for its sensor to stand in a scene.
     """
     from skyoptics.scene.model import Aim, Camera, Light
 
@@ -34,6 +40,11 @@ def refitted(scene: Scene, view: View, sun_azimuth: float, sun_elevation: float,
     sensor = view.camera.sensor
     # a scene takes sides of 1 to 1000 mm; angles depend on ratios only
     factor = min(1.0, 900.0 / (max(sensor.width, sensor.height) / MM))
+    if view.camera.focal / MM * factor < 0.5:
+        raise DomainError(
+            f"a sensor of {sensor.width / MM:.4g} × {sensor.height / MM:.4g} mm is too large for a lens of "
+            f"{view.camera.focal / MM:g} mm: no scene can be rendered through it; take a longer one"
+        )
     camera = Camera(
         lens=cast(Any, view.camera.lens),
         focal_mm=view.camera.focal / MM * factor,

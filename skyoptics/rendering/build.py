@@ -135,8 +135,7 @@ def build(scene: Scene, where: str, stokes: bool = False) -> Job:
     with _blame(where, "ground"):
         ground = ground_of(scene.ground, scene.picture.ground, eye_height, background, bins, sources, haze)
     with _blame(where, "air"):
-        pixel = float(np.nanmedian(directions.pixel_size()))
-        around = Surroundings(bins, sources, background, air, haze, eye_height, ground, pixel)
+        around = Surroundings(bins, sources, background, air, haze, eye_height, ground, _pixel(directions))
         background, sheets = put_in_place(sheets, around)
     with _blame(where, "ground"):
         water = water_of(scene.ground, eye_height, ground or background, bins, sources)
@@ -274,6 +273,13 @@ def _index(particles: Drops | Crystals, medium: str) -> material.RefractiveIndex
     if isinstance(particles, Drops):
         return material.water(particles.temperature, medium)
     return material.ice(medium)
+
+
+def _pixel(directions: Directions) -> float:
+    """Return the size of a usual pixel [rad], from a few rows: the picture may be larger than memory."""
+    rows = np.unique(np.linspace(0, directions.shape[0] - 1, 9).astype(int))
+    sizes = np.concatenate([directions.pixel_size(slice(row, row + 1)) for row in rows])
+    return float(np.nanmedian(sizes)) if np.any(np.isfinite(sizes)) else float(np.nanmax(directions.pixel_size()))
 
 
 def _directions(scene: Scene, source: Source) -> Directions:

@@ -25,7 +25,8 @@ from skyoptics.rendering.eye import exposure_asked, neutral
 from skyoptics.rendering.run import Result, Settings, render
 from skyoptics.rendering.scatter import Progress, silent
 from skyoptics.rendering.shots import METERS, developed
-from skyoptics.rendering.vary import Step, Vary, caption, quantity
+from skyoptics.rendering.vary import Step, Vary
+from skyoptics.rendering.vary_words import caption, quantity
 from skyoptics.scene.files import safe_name
 from skyoptics.scene.model import Scene
 from skyoptics.units import DEG, FloatArray

@@ -4,9 +4,7 @@ A still picture of crystals draws random numbers that belong to its own sun, so 
 that would flicker. Here a film's seed alone decides them, and a guide into a narrow frame is learnt from them too: the same
 rays are followed in every frame, and the noise moves with the picture. Every frame gets the same number of rounds.
 
-Tables of drops do not depend on where the sun stands: they are found, and averaged over its disc, once. Where nothing but
-such tables scatters, and a sheet's amount is grey, its spectrum is brought to colour in the table instead of in every pixel:
-sum and look-up change places, which is the same to rounding and a third of the work.
+Tables of drops do not depend on where the sun stands: they are found, and averaged over its disc, once.
 """
 
 from __future__ import annotations
@@ -28,17 +26,14 @@ from skyoptics.colour.images import dither_threshold
 from skyoptics.colour.observer import weights
 from skyoptics.crystals import guide
 from skyoptics.crystals.prepared import Prepared
-from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.geometry.directions import Directions
-from skyoptics.optics.axisymmetric import Axisymmetric
-from skyoptics.optics.source import Source
 from skyoptics.rendering import expose, further
 from skyoptics.rendering.build import Job, build
+from skyoptics.rendering.colours import ALONE, colours, tables_only
 from skyoptics.rendering.expose import Work
 from skyoptics.rendering.eye import exposure_asked, through_the_eye
 from skyoptics.rendering.film import Film
 from skyoptics.rendering.looking import Mirror, tristimulus
-from skyoptics.rendering.memory import blocks
 from skyoptics.rendering.run import Settings, reflection, scatter_all
 from skyoptics.rendering.scatter import Progress, is_table, silent
 from skyoptics.rendering.store import trace_key
@@ -46,8 +41,6 @@ from skyoptics.scene.model import Scene
 from skyoptics.sky.compose import Scatterer, Sheet
 from skyoptics.units import ArrayLike, Float32Array, FloatArray
 
-_ALONE = 2700
-"""Rows of a product of matrices that one thread does alone: frames run side by side, threads of their own are in the way."""
 _HELD_PIXELS = 4_000_000
 METERS: dict[str, Callable[[ArrayLike], float]] = {"sky": automatic_exposure, "average": metered_exposure}
 
@@ -231,7 +224,7 @@ class Studio:
             and mirror is None
             and job.polariser is None
             and job.cover == 0.0
-            and _tables_only(job, sheets)
+            and tables_only(job, sheets)
         ):
             xyz = colours(job, sheets, weights(job.bins, observer))
         else:
@@ -254,81 +247,11 @@ def _with_films(sheets: list[Sheet], before: list[Work], after: list[Work]) -> l
     return [replace(sheet, scatterers=tuple(other(one) for one in sheet.scatterers)) for sheet in sheets]
 
 
-def _tables_only(job: Job, sheets: Sequence[Sheet]) -> bool:
-    """Return whether all light depends on the scattering angle alone, and comes unpolarised."""
-    natural = not any(np.any(source.stokes[:, 1:]) for source in job.sources)
-    return natural and all(isinstance(one, Axisymmetric) for sheet in sheets for one in sheet.scatterers)
-
-
-def colours(job: Job, sheets: Sequence[Sheet], matrix: FloatArray) -> Float32Array:
-    """Return XYZ of a job whose light depends on the scattering angle alone, shape (ny, nx, 3) [cd m⁻²].
-
-    Parameters
-    ----------
-    job : Job
-        Without polariser, water and disc over the sun; unpolarised sources.
-    sheets : sequence of Sheet
-        With `Axisymmetric` scatterers.
-    matrix : ndarray, shape (nλ, 3)
-        From `skyoptics.colour.observer.weights`.
-    """
-    grid = job.directions
-    quick = [[_in_colour(one, source, matrix) for one, source in _pairs(sheet, job)] for sheet in sheets]
-    xyz = np.empty((*grid.shape, 3), dtype=np.float32)
-    for rows in blocks(grid.shape):
-        vectors = grid.vectors(rows)
-        azimuth, elevation = azimuth_elevation(vectors)
-        total = _times(job.background.radiance(vectors), matrix)
-        for sheet, tables in zip(sheets, quick, strict=True):
-            for (scatterer, source), table in zip(_pairs(sheet, job), tables, strict=True):
-                amount = sheet.amount(azimuth, elevation, source)
-                if amount.shape[-1] == 1:
-                    total += table.phase(source, grid, rows) * amount
-                else:
-                    total += _times(scatterer.phase(source, grid, rows) * source.irradiance * amount, matrix)
-        xyz[rows] = total
-    return xyz
-
-
-def _pairs(sheet: Sheet, job: Job) -> list[tuple[Scatterer, Source]]:
-    return list(zip(sheet.scatterers, job.sources, strict=True))
-
-
-def _in_colour(scatterer: Scatterer, source: Source, matrix: FloatArray) -> Axisymmetric:
-    """Return a scatterer whose three bands are X, Y, Z of the light of a source."""
-    assert isinstance(scatterer, Axisymmetric)
-    table = scatterer.table
-    light = table.elements.sum(axis=0)[..., 0] * (scatterer.share * source.irradiance) @ matrix
-    elements = np.zeros((1, len(light), 3, 6))
-    elements[0, ..., 0] = light
-    bands = np.full(3, np.nan)  # no wavelengths any more
-    return Axisymmetric(
-        replace(
-            table,
-            elements=elements,
-            error=np.zeros(elements.shape[:3]),
-            wavelength=bands,
-            albedo=bands,
-            asymmetry=bands,
-        ),
-        np.ones(3),
-    )
-
-
-def _times(block: FloatArray, matrix: FloatArray) -> FloatArray:
-    """Return block @ matrix, shape (..., 3), in this thread alone."""
-    flat = block.reshape(-1, block.shape[-1])
-    result = np.empty((len(flat), 3))
-    for start in range(0, len(flat), _ALONE):
-        np.matmul(flat[start : start + _ALONE], matrix, out=result[start : start + _ALONE])
-    return result.reshape(*block.shape[:-1], 3)
-
-
 def developed(xyz: Float32Array, exposure_ev: float, white: FloatArray | None) -> NDArray[np.uint8]:
     """Return a frame as it is stored: display-encoded, 8 bits, dithered like every picture (`skyoptics.colour.images`)."""
     rows, columns = xyz.shape[:2]
     result = np.empty(xyz.shape, dtype=np.uint8)
-    for start in range(0, rows, step := max(1, 8 * _ALONE // columns)):
+    for start in range(0, rows, step := max(1, 8 * ALONE // columns)):
         part = slice(start, min(start + step, rows))
         values = encode(develop(xyz[part], exposure_ev, white).rgb)
         result[part] = np.floor(np.clip(values, 0.0, 1.0) * 255.0 + _threshold(part.start, part.stop, columns))

@@ -78,9 +78,7 @@ def divided(job: Job, shape: tuple[int, int]) -> list[Tile]:
 
     down, across = min(grids, key=cost)
     return [
-        Tile(rows, columns)
-        for rows in _parts(shape[0], down)
-        for columns in _parts(shape[1], min(across, shape[1]))
+        Tile(rows, columns) for rows in _parts(shape[0], down) for columns in _parts(shape[1], min(across, shape[1]))
     ]
 
 

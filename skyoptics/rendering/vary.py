@@ -16,7 +16,7 @@ from __future__ import annotations
 import re
 from collections.abc import Sequence
 from dataclasses import dataclass
-from datetime import UTC, datetime
+from datetime import UTC
 from math import exp, isfinite, log
 from pathlib import Path
 from typing import Any, Literal, NamedTuple
@@ -28,7 +28,6 @@ from skyoptics.scene.files import unreadable
 from skyoptics.scene.load import from_text, load
 from skyoptics.scene.model import Scene
 from skyoptics.scene.table import Table
-from skyoptics.words.table import number, say
 
 EXAMPLE = "light.elevation_deg=0:40 (a range) or air.1.radius_um=10,50,250 (a list)"
 MOST_VALUES = 20000
@@ -38,14 +37,6 @@ _TIME = r"\d{4}-\d\d-\d\d[T ]\d\d:\d\d(?::\d\d(?:\.\d+)?)?(?:Z|[+-]\d\d:?\d\d)?"
 _CLOCK = re.compile(rf"({_TIME})(?:[:/]|\.\.)({_TIME})(?::(.*))?")
 _TIMES = re.compile(rf"{_TIME}(?:\s*,\s*{_TIME})*")
 _KEY = re.compile(r"[A-Za-z0-9_-]+(?:\.[A-Za-z0-9_-]+)*")
-_UNITS = {"degrees": "°", "pixels": "px"}
-_AXES = {
-    "elevation_deg": "axis.sun_elevation",
-    "radius_um": "axis.drop_radius",
-    "tilt_deg": "axis.tilt",
-    "aspect": "axis.aspect",
-    "time": "axis.time",
-}
 
 
 @dataclass(frozen=True)
@@ -283,39 +274,3 @@ def rule_in(scene: Scene, key: str) -> Rule | None:
     for part in tables:
         here = here[int(part) - 1] if isinstance(here, tuple) else getattr(here, part)
     return rule_of(type(here).model_fields[last]) if isinstance(here, Table) else None
-
-
-def quantity(step: Step, vary: Vary, lang: str = "en") -> str:
-    """Return what is taken through values, in words: "drop radius"; keys without words of their own by their name."""
-    last = vary.key.rpartition(".")[2]
-    axis = _AXES.get(last)
-    if last == "elevation_deg" and (not vary.key.startswith("light.") or step.scene.light.body == "moon"):
-        axis = "axis.elevation"
-    if last == "radius_um" and not vary.key.startswith("air."):
-        axis = None
-    if axis is not None:
-        return re.sub(r" \[.*\]$", "", say(axis, lang))
-    rule = rule_in(step.scene, vary.key)
-    if rule is not None and rule.unit and rule.form in ("number", "whole"):
-        last = last.rpartition("_")[0] or last
-    return last.replace("_", " ")
-
-
-def caption(step: Step, vary: Vary, lang: str = "en") -> str:
-    """Return a value with its unit, as a language writes it: "250 µm", "12,5°", "18:40"."""
-    value = step.value
-    if isinstance(value, bool):
-        return "true" if value else "false"
-    if isinstance(value, str):
-        moment = step.scene.light.when if vary.key == "light.time" else None
-        return _clock(moment) if moment is not None else value
-    if isinstance(value, int | float):
-        rule = rule_in(step.scene, vary.key)
-        unit = "" if rule is None else _UNITS.get(rule.unit, rule.unit)
-        gap = "" if unit in ("", "°") else " "
-        return f"{number(value, lang, '.4g')}{gap}{unit}"
-    return step.text
-
-
-def _clock(moment: datetime) -> str:
-    return f"{moment:%Y-%m-%d %H:%M}"

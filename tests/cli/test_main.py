@@ -44,11 +44,11 @@ def test_help_is_quick():
     assert best < 0.15
 
 
-@pytest.mark.parametrize("name", [*COMMANDS, "phase drop"])
+@pytest.mark.parametrize("name", [*COMMANDS, "phase drop", "paths drop", "paths crystal"])
 def test_every_command_has_help_with_an_example(command, name):
     done = command(*name.split(), "--help")
     assert done.code == 0
-    if name != "phase":
+    if name not in ("phase", "paths"):  # groups
         assert "Example: skyoptics " + name in re.sub(r"\s+", " ", done.out)
 
 

@@ -104,13 +104,12 @@ def test_a_part_sees_what_the_same_pixels_of_the_whole_see(name):
         whole = panorama(2 * np.pi, np.pi, (90, 180), 30 * DEG, 10 * DEG, 15 * DEG)
     else:
         whole = grid(name)
-    part = whole.crop(slice(20, 61), slice(-50, None))
-    assert part.shape == (41, 50)
-    expected = whole.vectors()[20:61, -50:]
+    part = whole.crop(slice(40, 81), slice(100, -50))
+    assert part.shape == (41, whole.shape[1] - 150)
+    expected = whole.vectors()[40:81, 100:-50]
     assert np.allclose(part.vectors(), expected, rtol=0.0, atol=1e-15, equal_nan=True)
-    assert np.allclose(part.solid_angle(), whole.solid_angle()[20:61, -50:], rtol=1e-9, atol=0.0)
-    row, column = part.project(whole.vectors()[45, whole.shape[1] - 30])
-    assert np.ravel([row, column]) == pytest.approx([25.0, 20.0], abs=0.01, nan_ok=np.isnan(expected[25, 20]).any())
+    assert np.allclose(part.solid_angle(), whole.solid_angle()[40:81, 100:-50], rtol=1e-9, atol=0.0)
+    assert np.ravel(part.project(whole.vectors()[65, 120])) == pytest.approx([25.0, 20.0], abs=0.01)
 
 
 @pytest.mark.parametrize("rows", [slice(5, 5), slice(300, 400), slice(0, 50, 2)])

@@ -115,3 +115,14 @@ def test_words():
     assert aim_for("rectilinear", FULL, one, Aim(1.0, 0.5, 0.1)) == Aim(1.0, 0.5, 0.1)
     with pytest.raises(DomainError, match="best, level"):
         aim_for("rectilinear", FULL, one, "west")
+
+
+def test_towards_the_middle_where_no_lens_does():
+    # a ring around the zenith is more than a rectilinear lens sees
+    ring = held(np.linspace(0.0, 2.0 * np.pi, 3601), np.full(3601, 8.0 * DEG), 1.0)
+    aim = best_aim("rectilinear", FULL, ring)
+    assert longest_focal("rectilinear", FULL, ring.points, aim) is None
+    assert (aim.azimuth, aim.elevation) == pytest.approx((1.0, 8.0 * DEG))
+    assert longest_focal("equisolid", FULL, ring.points, best_aim("equisolid", FULL, ring)) == pytest.approx(
+        12.0 * MM / (2.0 * np.sin(41.0 * DEG)), rel=1e-6
+    )

@@ -93,6 +93,8 @@ class Stretch(NamedTuple):
     start: float
     end: float
     least: float
+    grain: float
+    """What the distance changes between the least look and its neighbours: feet run fast where the crown is low."""
 
 
 def stretches(seconds: np.ndarray, distance: np.ndarray, tolerance: float) -> list[Stretch]:
@@ -100,7 +102,13 @@ def stretches(seconds: np.ndarray, distance: np.ndarray, tolerance: float) -> li
     if not close.size:
         return []
     groups = np.split(close, np.flatnonzero((np.diff(close) > 1) | (np.diff(seconds[close]) > 1.5 * DENSE)) + 1)
-    return [Stretch(seconds[group[0]], seconds[group[-1]], distance[group].min()) for group in groups]
+    found = []
+    for group in groups:
+        least = group[np.argmin(distance[group])]
+        beside = distance[max(least - 1, 0) : least + 2]
+        grain = np.max(np.abs(beside[np.isfinite(beside)] - distance[least]))
+        found.append(Stretch(seconds[group[0]], seconds[group[-1]], distance[least], grain))
+    return found
 
 
 def compare(subject: Subject, part: alignment.Part, days: int, track: tuple[np.ndarray, ...], tolerance: float) -> int:
@@ -115,7 +123,7 @@ def compare(subject: Subject, part: alignment.Part, days: int, track: tuple[np.n
     assert len(ours) == len(theirs)
     for mine, other in zip(ours, theirs, strict=True):
         check(mine, tolerance)
-        assert mine.distance_deg == pytest.approx(other.least, abs=0.03)
+        assert other.least - other.grain - 0.03 <= mine.distance_deg <= other.least + 0.03
         rate_known = 20.0  # [s]: points 0.05° apart, 10 s between looks, an end where the distance changes slowly
         if mine.distance_deg < 0.5 * tolerance:
             assert abs((mine.start.time - BEGIN).total_seconds() - other.start) <= rate_known
@@ -159,7 +167,7 @@ def test_a_year_against_dense_looking() -> None:
         ("bow", 95.0, 4.0),
         ("foot", 20.0, 0.0),
         ("crown", 60.0, 35.0),
-        ("bow", 180.0, 15.0),
+        ("bow", 140.0, 15.0),
     ):
         assert compare(Subject(azimuth, elevation), part, 365, year, 0.5) > 0  # type: ignore[arg-type]
 

@@ -2,6 +2,7 @@
 
 import pytest
 
+from skyoptics.errors import DomainError
 from skyoptics.planning import sensors, under, view
 from skyoptics.planning.aiming import Aim
 from skyoptics.planning.framing import Camera
@@ -68,3 +69,9 @@ def test_moon():
     seen = view.around_frame(Camera("rectilinear", 24.0 * MM, sensors.find("36x24")), Aim(1.2, 0.3))
     found = under.refitted(scene, seen, 1.0, 0.4, "moon").light
     assert (found.body, found.phase_angle_deg) == ("moon", 0.0)
+
+
+def test_lens_too_short():
+    seen = view.around_frame(Camera("equisolid", 0.5 * MM, sensors.find("1000x800")), Aim(1.2, 0.3))
+    with pytest.raises(DomainError, match="too large for a lens"):
+        under.refitted(from_text(SCENE), seen, 1.0, 0.4, "sun")
