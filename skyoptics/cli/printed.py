@@ -79,7 +79,7 @@ def run(given: Mapping[str, Any]) -> None:
         click.echo(json.dumps(made.report, ensure_ascii=False))
     columns, rows = made.place.picture[1], made.place.picture[0]
     click.echo(
-        f"{written[0]}: {paper.upper()} at {printing.DPI} dpi, picture {columns} x {rows} pixels, {width:.0f} x {height:.0f} mm",
+        f"{written[0]}: {paper.upper()} at {made.report['print']['dpi']} dpi, picture {columns} x {rows} pixels, {width:.0f} x {height:.0f} mm",
         err=given["as_json"],
     )
 

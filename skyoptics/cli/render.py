@@ -49,7 +49,9 @@ from skyoptics.cli.printed import Paper
 @click.option(
     "--sheet", "on_sheet", is_flag=True, help="All values of --vary on one comparison sheet, exposure and scale shared."
 )
-@click.option("--print", "print_size", type=Paper(), help="Instead, a sheet of paper at 300 dpi: margins, caption, scale.")
+@click.option(
+    "--print", "print_size", type=Paper(), help="Instead, a sheet of paper at 300 dpi: margins, caption, scale."
+)
 @json_option
 @sampling_options
 def command(

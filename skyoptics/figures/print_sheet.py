@@ -195,7 +195,7 @@ def write(sheet: Sheet, place: Layout, words: Words) -> None:
     pen: Any = ImageDraw.Draw(image)
     left, right = place.words
     title, caption, small = (place.points(size) for size in (TITLE_PT, CAPTION_PT, RIGHTS_PT))
-    bar_left = right
+    bar_left = float(right)
     top = _px(GAP_MM * place.scale)
     if words.bar is not None:
         bar_left = _bar(pen, words.bar, right, top, place)

@@ -238,7 +238,8 @@ class Directions:
         if self.kind == CYLINDRICAL:
             return np.sqrt(solid) if self.shape[1] > 1 else np.full_like(solid, self.map[3])
         solid[~(solid > 0.0)] = self.map[0] ** -2
-        return np.sqrt(solid, out=solid)
+        np.sqrt(solid, out=solid)
+        return solid
 
     def coarse(self, side: int) -> Directions:
         """Return the grid whose cells are side · side pixels of this one, the first with its corner in the first pixel."""

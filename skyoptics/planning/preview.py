@@ -24,7 +24,7 @@ from skyoptics.planning.aiming import Aim
 from skyoptics.planning.bands import WHITE, bands
 from skyoptics.planning.features import Feature
 from skyoptics.planning.framing import Camera, image
-from skyoptics.planning.preview_strokes import BESIDE, compass_ticks, draw_band, draw_line, thirds, with_texts
+from skyoptics.planning.preview_strokes import BESIDE, SPOT, compass_ticks, draw_band, draw_line, thirds, with_texts
 from skyoptics.planning.view import View, edge
 from skyoptics.units import DEG, FloatArray
 
@@ -165,6 +165,8 @@ def _draw_feature(sheet: Sheet, grid: Directions, feature: Feature, asked: Previ
             draw_band(sheet, grid, band, scale)
         middle = band.edges[len(band.edges) // 2]
         row, column = grid.project(middle)
+        if len(middle) == 1:  # a leader's dot would hide a spot
+            row = row - SPOT * scale - 0.4 * sheet.size
         up = middle[:, 2] >= 0.0
         # a foot is a poor place for a label: there stands what is on the horizon
         high = np.clip(0.4 + middle[up, 2] / np.sin(15.0 * DEG), 0.4, 1.0)
@@ -193,8 +195,9 @@ def _drawn_over(
     line = overlay.horizon(grid)
     if len(line):
         sheet.line(line)
+    lined = _along_edge(grid, asked) if len(asked.aims) == 1 else []
     for tick in compass_ticks(grid):
-        taken += sheet.tick(tick, taken)
+        taken += sheet.tick(tick, [*taken, *lined])
     source = direction(asked.sun_azimuth, asked.sun_elevation)
     for vector, name, ring in (
         (source, asked.features[0].body.capitalize(), True),
@@ -211,6 +214,12 @@ def _drawn_over(
     for one in placed:
         sheet.text(one.lines, one.box, one.align)
     return sheet.over(picture)
+
+
+def _along_edge(grid: Directions, asked: Preview) -> list[Box]:
+    """Return small boxes along the edge of the frame, where figures of the compass would be hard to read."""
+    row, column = grid.project(edge(asked.camera, asked.aims[0]))
+    return [(float(x) - 1.0, float(y) - 1.0, float(x) + 1.0, float(y) + 1.0) for x, y in zip(column, row, strict=True)]
 
 
 def _draw_frame(sheet: Sheet, grid: Directions, asked: Preview, aim: Aim, number: int | None, taken: list[Box]) -> None:

@@ -298,7 +298,6 @@ def _memory(job: Job, picture: Picture, settings: Settings, place: Layout) -> in
     pixels = place.picture[0] * place.picture[1]
     need = memory.predict(job, settings.threads, False)
     need += 8 * place.shape[0] * place.shape[1]  # the sheet, and once more while it is written
-    need += 2 * 8 * pixels  # the pixels' sizes, and their median
     if films := tiles.film_sheets(job):
         tile = max(part.pixels for part in tiles.divided(job, place.picture))
         components = 4 if job.stokes else 1
@@ -306,7 +305,7 @@ def _memory(job: Job, picture: Picture, settings: Settings, place: Layout) -> in
         need += tile * planes * (4 * components * len(job.bins) + 8)
         need += tile * (12 + 24 + 17 * 8 + 3 * settings.threads * 4 * components)
     if _needs_all(picture):
-        need += pixels * (12 + 12 + (6 * 8 if picture.glare == "eye" else 8))
+        need += pixels * (12 + 12 + (7 * 8 if picture.glare == "eye" else 8))
     return int(need)
 
 

@@ -20,6 +20,7 @@ from skyoptics.rendering.build import Job
 from skyoptics.rendering.clouds import CrystalSheet
 from skyoptics.rendering.expose import Work
 from skyoptics.rendering.looking import Mirror, look, mirrored, tristimulus
+from skyoptics.rendering.rain import DropSheet
 from skyoptics.rendering.run import Result, whole_amount
 from skyoptics.rendering.scatter import Progress, Sampling, Traced, crystal_identity, is_table
 from skyoptics.rendering.store import trace_key
@@ -46,7 +47,7 @@ class Tile:
 
 def film_sheets(job: Job) -> int:
     """Return the number of sheets that need films."""
-    return sum(_on_film(sheet) for sheet in job.sheets)
+    return len([sheet for sheet in job.sheets if _on_film(sheet)])
 
 
 def divided(job: Job, shape: tuple[int, int]) -> list[Tile]:
@@ -187,7 +188,7 @@ def _films(job: Job, seed: int) -> dict[int, tuple[Work, ...]]:
     found: dict[int, tuple[Work, ...]] = {}
     seen: list[str] = []
     for place, sheet in enumerate(job.sheets):
-        if isinstance(sheet, CrystalSheet) and not is_table(sheet):
+        if isinstance(sheet, CrystalSheet) and _on_film(sheet):
             alike = trace_key(index=sheet.index.key, **crystal_identity(sheet))
             copy = seen.count(alike)
             seen.append(alike)
@@ -207,7 +208,7 @@ def _sheets(job: Job, found: list[Sheet], films: dict[int, tuple[Work, ...]]) ->
     return result
 
 
-def _on_film(sheet: object) -> bool:
+def _on_film(sheet: DropSheet | CrystalSheet) -> bool:
     return isinstance(sheet, CrystalSheet) and not is_table(sheet)
 
 
