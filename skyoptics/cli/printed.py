@@ -77,11 +77,9 @@ def run(given: Mapping[str, Any]) -> None:
     width, height = made.place.picture_mm
     if given["as_json"]:
         click.echo(json.dumps(made.report, ensure_ascii=False))
-    columns, rows = made.place.picture[1], made.place.picture[0]
-    click.echo(
-        f"{written[0]}: {paper.upper()} at {made.report['print']['dpi']} dpi, picture {columns} x {rows} pixels, {width:.0f} x {height:.0f} mm",
-        err=given["as_json"],
-    )
+    rows, columns = made.place.picture
+    size = f"picture {columns} x {rows} pixels, {width:.0f} x {height:.0f} mm"
+    click.echo(f"{written[0]}: {paper.upper()} at {made.report['print']['dpi']} dpi, {size}", err=given["as_json"])
 
 
 def _tell(found: Mapping[str, Any], as_json: bool) -> None:

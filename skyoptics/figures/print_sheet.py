@@ -232,7 +232,7 @@ def _bar(pen: Any, bar: tuple[float, str], right: int, top: float, place: Layout
     """Draw a bar of scale under the right end of the picture, its words to the left; return where they begin."""
     length, text = bar
     size = place.points(CAPTION_PT)
-    thick = max(2, round(0.09 * size))
+    thick = max(2, round(0.13 * size))
     middle, ends = round(top + 0.5 * place.points(TITLE_PT)), round(0.32 * size)
     begin = right - round(length)
     pen.rectangle((begin, middle - thick // 2, right - 1, middle - thick // 2 + thick - 1), fill=INK)
