@@ -72,6 +72,11 @@ def run(given: Mapping[str, Any]) -> None:
     words += [word for override in given["overrides"] for word in ("--set", override)]
     words += ["--print", paper, *(["--lang", lang] if lang != "en" else [])]
     written = printing.write(made, folder, name, words, lang)
+    if made.note:
+        click.echo(f"note: {made.note}", err=True)
+    for sheet in made.report["sheets"]:
+        for warning in sheet.get("warnings", ()):
+            click.echo(f"note: {sheet['name']}: {warning}", err=True)
     for caution in made.report["cautions"]:
         click.echo(f"caution: {caution}", err=True)
     width, height = made.place.picture_mm

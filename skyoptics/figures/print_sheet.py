@@ -6,6 +6,7 @@ sheet is read from farther away. Paper sizes: ISO 216.
 
 from __future__ import annotations
 
+from bisect import bisect_right
 from dataclasses import dataclass
 from math import sqrt
 from typing import Any
@@ -248,9 +249,7 @@ def _cut(text: str, font: Any, widest: float) -> str:
     """Return a text, or its beginning with an ellipsis."""
     if not text or font.getlength(text) <= widest:
         return text
-    kept = len(text)
-    while kept and font.getlength(f"{text[:kept].rstrip()}…") > widest:
-        kept -= 1
+    kept = bisect_right(range(1, len(text)), widest, key=lambda k: font.getlength(f"{text[:k].rstrip()}…"))
     return f"{text[:kept].rstrip()}…" if kept else ""
 
 
@@ -261,7 +260,7 @@ def _fitting(texts: tuple[str, ...], font: Any, widest: float) -> list[str]:
         lines = _wrapped(text, font, widest)
         if len(lines) <= CAPTION_LINES:
             return lines
-    rest = " ".join(lines[CAPTION_LINES - 1 :])
+    rest = " ".join(lines[CAPTION_LINES - 1 : CAPTION_LINES + 1])
     return [*lines[: CAPTION_LINES - 1], _cut(rest, font, widest)] if lines else []
 
 

@@ -339,4 +339,5 @@ def _triangle(a: FloatArray, b: FloatArray, c: FloatArray) -> FloatArray:
     """Return solid angles of spherical triangles of unit vectors."""
     triple = np.abs(np.einsum("...i,...i", a, np.cross(b - a, c - a)))
     dots = np.einsum("...i,...i", a, b) + np.einsum("...i,...i", b, c) + np.einsum("...i,...i", c, a)
-    return 2.0 * np.arctan2(triple, 1.0 + dots)
+    result: FloatArray = 2.0 * np.arctan2(triple, 1.0 + dots)
+    return result

@@ -24,6 +24,7 @@ from pathlib import Path
 
 import numpy as np
 
+from skyoptics import textfile
 from skyoptics.errors import DataFileError, DomainError, nearest
 from skyoptics.geometry.axes import azimuth_elevation
 from skyoptics.units import DEG, ArrayLike, BoolArray, FloatArray
@@ -253,7 +254,7 @@ def read(path: str | Path, widest_gap: float = WIDEST_GAP) -> Profile:
     """
     lines = [
         (number, line.strip())
-        for number, line in enumerate(_text(path).split("\n"), start=1)
+        for number, line in enumerate(textfile.read(path, _LARGEST_FILE, "a horizon").split("\n"), start=1)
         if line.strip() and not line.lstrip().startswith("#")
     ]
     if not lines:
@@ -278,26 +279,6 @@ def read(path: str | Path, widest_gap: float = WIDEST_GAP) -> Profile:
         raise DataFileError("\n".join(faults[:_FAULTS_SHOWN] + ([f"{path}: and {more} more"] if more > 0 else [])))
     table = np.array(points)
     return Profile(table[:, 0], table[:, 1])
-
-
-def _text(path: str | Path) -> str:
-    """Return the file's text, or say why it cannot be read."""
-    try:
-        with open(path, "rb") as file:
-            raw = file.read(_LARGEST_FILE + 1)
-    except FileNotFoundError:
-        raise DataFileError(f"{path}: no such file") from None
-    except IsADirectoryError:
-        raise DataFileError(f"{path}: is a folder; give a CSV file") from None
-    except (OSError, ValueError) as error:
-        raise DataFileError(f"{path}: cannot be read ({getattr(error, 'strerror', None) or error})") from None
-    if len(raw) > _LARGEST_FILE:
-        raise DataFileError(f"{path}: larger than {_LARGEST_FILE // 1_000_000} MB; a horizon needs far less")
-    try:
-        return raw.decode("utf-8-sig").replace("\r\n", "\n").replace("\r", "\n")
-    except UnicodeDecodeError as error:
-        line = raw.count(b"\n", 0, error.start) + 1
-        raise DataFileError(f"{path}:{line}: not UTF-8 text; save the horizon as CSV in UTF-8") from None
 
 
 def _header(where: str, header: str, separator: str) -> list[str]:

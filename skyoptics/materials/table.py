@@ -20,6 +20,7 @@ from pathlib import Path
 
 import numpy as np
 
+from skyoptics import textfile
 from skyoptics.errors import DataFileError, nearest
 from skyoptics.units import NM, UM, FloatArray
 
@@ -94,7 +95,7 @@ def read(path: str | Path) -> IndexTable:
     """
     lines = [
         (number, line.strip())
-        for number, line in enumerate(_text(path).split("\n"), start=1)
+        for number, line in enumerate(textfile.read(path, _LARGEST_FILE, "an index table").split("\n"), start=1)
         if line.strip() and not line.lstrip().startswith("#")
     ]
     if not lines:
@@ -123,28 +124,6 @@ def read(path: str | Path) -> IndexTable:
     data.setflags(write=False)
     digest = sha256(np.ascontiguousarray(data, dtype="<f8").tobytes()).hexdigest()[:16]
     return IndexTable(data[:, 0], data[:, 1], data[:, 2], digest)
-
-
-def _text(path: str | Path) -> str:
-    """Return the file's text, or say why it cannot be read."""
-    try:
-        with open(path, "rb") as file:
-            raw = file.read(_LARGEST_FILE + 1)
-    except FileNotFoundError:
-        raise DataFileError(f"{path}: no such file") from None
-    except IsADirectoryError:
-        raise DataFileError(f"{path}: is a folder; give a CSV file") from None
-    except PermissionError:
-        raise DataFileError(f"{path}: may not be read; check its permissions") from None
-    except (OSError, ValueError) as error:
-        raise DataFileError(f"{path}: cannot be read ({error})") from None
-    if len(raw) > _LARGEST_FILE:
-        raise DataFileError(f"{path}: larger than {_LARGEST_FILE // 1_000_000} MB; an index table needs far less")
-    try:
-        return raw.decode("utf-8-sig").replace("\r\n", "\n").replace("\r", "\n")
-    except UnicodeDecodeError as error:
-        line = raw.count(b"\n", 0, error.start) + 1
-        raise DataFileError(f"{path}:{line}: not UTF-8 text; save the table as CSV in UTF-8") from None
 
 
 def _header(where: str, header: str, separator: str) -> list[str]:

@@ -24,7 +24,8 @@ class Stance(NamedTuple):
     crown_azimuth: float
     """Of the same point; of two that are equally high the left one."""
     feet: tuple[float, ...]
-    """Azimuths where the outline meets the horizon: leftmost and rightmost as seen when facing the feature."""
+    """Azimuths where the outline meets the horizon: leftmost and rightmost as seen when facing the side of the sky, to the
+    sun or from it, on which the crown is."""
     share: float
     """Part of the length (of spots: of their number) that is above the horizon, 0 to 1."""
 
@@ -77,9 +78,8 @@ def measure(azimuth: FloatArray, elevation: FloatArray, floor: FloatArray | floa
     a, b = first[crossing], last[crossing]
     part = over[a] / (over[a] - over[b])
     where = azimuth[a] + part * wrapped(azimuth[b] - azimuth[a])
-    # a feature lies about the sun's vertical: one faces the sun or turns its back on it
-    middle = np.sum((up * weight)[:, None] * _at(azimuth, elevation, first), axis=0)
-    facing = 0.0 if middle[1] >= 0.0 else np.pi
+    # a feature lies about the sun's vertical: one faces the sun, or turns one's back on it
+    facing = 0.0 if abs(crown) <= np.pi / 2.0 else np.pi
     offset = wrapped(where - facing)
     left, right = float(offset.min()), float(offset.max())
     ends = (left,) if right - left < 1e-9 else (left, right)

@@ -26,9 +26,10 @@ from skyoptics.camera import overlay
 from skyoptics.colour import images, metadata
 from skyoptics.colour.develop import Developed, develop
 from skyoptics.colour.display import encode
+from skyoptics.errors import ResourceError
 from skyoptics.figures import print_sheet
 from skyoptics.figures.print_sheet import DPI, Layout, Words, layout
-from skyoptics.rendering import alt_text, caption, estimate, expose, memory, output, tiles
+from skyoptics.rendering import alt_text, caption, estimate, expose, features, memory, output, tiles
 from skyoptics.rendering.build import Job, build
 from skyoptics.rendering.eye import through_the_eye
 from skyoptics.rendering.run import Settings, render
@@ -58,11 +59,14 @@ class Printed:
         Where the picture stands on it.
     report : dict
         Of the small picture, with size, paper and what was traced for the large one; JSON types.
+    note : str or None
+        What is missing from the picture, in words.
     """
 
     sheet: NDArray[np.uint8]
     place: Layout
     report: dict[str, Any]
+    note: str | None = None
 
 
 def printed(
@@ -102,7 +106,7 @@ def printed(
     place = layout(paper, *scene.camera.pixels)
     print_sheet.check_words(scene.title, scene.author, scene.licence)
     first = small(scene)
-    memory.check(_memory(build(first, where), scene.picture, settings, place))
+    _check(_memory(build(first, where), scene.picture, settings, place))
     result = render(first, where, settings, progress)
     output.describe(result, first, lang)
     job = build(_sized(scene, place.picture[1], place.picture[0]), where)
@@ -134,7 +138,7 @@ def printed(
         "sheets": [how.summary() for how in traced],
         "seconds": round(time.perf_counter() - start, 3),
     }
-    return Printed(sheet, place, report)
+    return Printed(sheet, place, report, features.warning(result.job))
 
 
 def words(job: Job, report: Mapping[str, Any], lang: str = "en") -> Words:
@@ -307,6 +311,15 @@ def _memory(job: Job, picture: Picture, settings: Settings, place: Layout) -> in
     if _needs_all(picture):
         need += pixels * (12 + 12 + (7 * 8 if picture.glare == "eye" else 8))
     return int(need)
+
+
+def _check(need: int) -> None:
+    """Refuse a print that needs too much memory, with what helps."""
+    try:
+        memory.check(need)
+    except ResourceError as error:
+        needed = str(error).partition(": ")[0]
+        raise ResourceError(f"{needed}: take smaller paper, or fewer wavelengths (picture.bin_nm)") from error
 
 
 def _needs_all(picture: Picture) -> bool:

@@ -42,7 +42,7 @@ class Tile:
     @property
     def pixels(self) -> int:
         """Pixels in it."""
-        return (self.rows.stop - self.rows.start) * (self.columns.stop - self.columns.start)
+        return int((self.rows.stop - self.rows.start) * (self.columns.stop - self.columns.start))
 
 
 def film_sheets(job: Job) -> int:

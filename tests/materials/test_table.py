@@ -97,7 +97,7 @@ FAULTS = [
     (GOOD.replace(",1.34", ""), r"liquid\.csv:2: 2 value\(s\) where the header names 3 columns$"),
     (GOOD.replace(",", ";").replace("1.34", "1,34"), r"n is '1,34'; a finite number is needed; write a decimal point"),
     (GOOD.encode("utf-16"), r"liquid\.csv:1: not UTF-8 text"),
-    (GOOD.encode() + b"# 20 \xb0C\n", r"liquid\.csv:4: not UTF-8 text; save the table as CSV in UTF-8"),
+    (GOOD.encode() + b"# 20 \xb0C\n", r"liquid\.csv:4: not UTF-8 text; save it as CSV in UTF-8"),
     (b"\x89PNG\r\n\x1a\n\x00\x00", "not UTF-8"),
 ]
 
