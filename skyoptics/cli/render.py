@@ -50,6 +50,10 @@ from skyoptics.cli.printed import Paper
     "--sheet", "on_sheet", is_flag=True, help="All values of --vary on one comparison sheet, exposure and scale shared."
 )
 @click.option(
+    "--today", metavar="PLACE", help="Add to the caption when this can be seen today: coordinates, or one of your places."
+)
+@click.option("--tz", help="Its time zone, such as Europe/Zurich, where it cannot be looked up.")
+@click.option(
     "--print", "print_size", type=Paper(), help="Instead, a sheet of paper at 300 dpi: margins, caption, scale."
 )
 @json_option
@@ -73,6 +77,8 @@ def command(
     vary: str | None,
     on_sheet: bool,
     print_size: str | None,
+    today: str | None,
+    tz: str | None,
     as_json: bool,
     quality: str,
     seed: int,
@@ -97,6 +103,8 @@ def command(
 
         printed.run(click.get_current_context().params)
         return
+    if tz is not None and today is None:
+        raise click.UsageError("--tz is the zone of a place; give --today PLACE too")
     if visibility and only is not None:
         raise click.UsageError("--visibility asks about the whole picture; leave --only out")
     from skyoptics.scene.files import safe_name
@@ -115,7 +123,13 @@ def command(
     if explain is not None:
         _explain(described, scene, explain, settings, as_json)
         return
-    wanted = output.Wanted(folder, name if only is None else f"{name}.{only}", data, extra, noise_map, labels, lang)
+    teller = None
+    if today is not None:
+        from skyoptics.cli.today import teller as tell_today
+
+        teller = tell_today(today, tz, lang, described.light.body)
+    named = name if only is None else f"{name}.{only}"
+    wanted = output.Wanted(folder, named, data, extra, noise_map, labels, lang, teller)
     if dry_run:
         _estimate(described, scene, settings, wanted, stokes, as_json)
         return

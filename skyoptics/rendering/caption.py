@@ -57,6 +57,8 @@ def write(report: Mapping[str, Any], lang: str = "en") -> str:
     ]
     if points := phrases.unlike(shown["unlike"], shown["light"]["body"], lang, _MOST_POINTS):
         sentences.append(say("picture.unlike", lang, points=points))
+    if report.get("today"):
+        sentences.append(report["today"])
     return " ".join(sentence(text) for text in sentences)
 
 

@@ -24,6 +24,7 @@ from skyoptics.rendering.eye import exposure_asked, neutral
 from skyoptics.rendering.reel import Film, Reel
 from skyoptics.rendering.scatter import Progress, is_table, silent
 from skyoptics.rendering.shots import METERS, Shot, Studio, developed
+from skyoptics.rendering.skies import shelf_for
 from skyoptics.scene.digest import scene_hash
 from skyoptics.units import FloatArray
 
@@ -89,7 +90,7 @@ def shoot(reel: Reel, progress: Progress = silent) -> Iterator[NDArray[np.uint8]
         sRGB. The same bits for any number of threads, and for a film that was stopped and taken up again.
     """
     film, count = reel.film, len(reel.film.scenes)
-    studio = Studio(film.settings)
+    studio = Studio(film.settings, shelf=shelf_for(film.scenes))
     threads = film.settings.threads
     with ThreadPoolExecutor(threads) as tracers, ThreadPoolExecutor(threads) as makers:
         try:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -89,6 +89,8 @@ class Wanted:
         Whether to write an annotated copy.
     lang : str
         Language of labels, caption and alt text.
+    today : callable or None
+        Says of a feature when it can be seen today, None of one it does not know; its sentence ends the caption.
     """
 
     folder: Path
@@ -98,6 +100,7 @@ class Wanted:
     noise_map: bool = False
     labels: bool = False
     lang: str = "en"
+    today: Callable[[str], str | None] | None = None
 
     def path(self, ending: str) -> Path:
         """Return the path of one file."""
@@ -161,7 +164,7 @@ def write(result: Result, scene: Scene, wanted: Wanted, command: Sequence[str]) 
     list of Path
         What was written, the picture first.
     """
-    describe(result, scene, wanted.lang)
+    describe(result, scene, wanted.lang, wanted.today)
     entries = text_entries(result.report, command, wanted.lang)
     files = wanted.paths()
     if wanted.data:
@@ -193,9 +196,12 @@ def write(result: Result, scene: Scene, wanted: Wanted, command: Sequence[str]) 
     return files
 
 
-def describe(result: Result, scene: Scene, lang: str) -> None:
-    """Put into a report what its picture shows, its caption and its alt text."""
+def describe(result: Result, scene: Scene, lang: str, today: Callable[[str], str | None] | None = None) -> None:
+    """Put into a report what its picture shows, its caption and its alt text, and when that can be seen today."""
     result.report["shows"] = shows(result, scene)
+    if today is not None:
+        told = (today(name) for name in result.report["shows"]["seen"])
+        result.report["today"] = next((sentence for sentence in told if sentence is not None), None)
     result.report["language"] = lang
     result.report["caption"] = caption.write(result.report, lang)
     result.report["alt_text"] = alt_text.write(result.report, lang)

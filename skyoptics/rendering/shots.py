@@ -12,7 +12,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from concurrent.futures import Executor
 from dataclasses import dataclass, field, fields, replace
-from functools import cached_property, lru_cache
+from functools import lru_cache
 from math import ceil
 from threading import Lock
 from typing import Any
@@ -29,40 +29,21 @@ from skyoptics.crystals.prepared import Prepared
 from skyoptics.geometry.directions import Directions
 from skyoptics.rendering import expose, further
 from skyoptics.rendering.build import Job, build
-from skyoptics.rendering.colours import ALONE, colours, tables_only
+from skyoptics.rendering.colours import ALONE, HeldGrid, colours, plainly_seen
 from skyoptics.rendering.expose import Work
 from skyoptics.rendering.eye import exposure_asked, through_the_eye
 from skyoptics.rendering.film import Film
 from skyoptics.rendering.looking import Mirror, tristimulus
 from skyoptics.rendering.run import Settings, reflection, scatter_all
 from skyoptics.rendering.scatter import Progress, is_table, silent
+from skyoptics.rendering.skies import Shelf
 from skyoptics.rendering.store import trace_key
 from skyoptics.scene.model import Scene
-from skyoptics.sky.compose import Scatterer, Sheet
+from skyoptics.sky.compose import Background, Scatterer, Sheet
 from skyoptics.units import ArrayLike, Float32Array, FloatArray
 
 _HELD_PIXELS = 4_000_000
 METERS: dict[str, Callable[[ArrayLike], float]] = {"sky": automatic_exposure, "average": metered_exposure}
-
-
-class HeldGrid(Directions):
-    """A grid that keeps its viewing directions and pixel sizes; frames under one camera share it."""
-
-    @cached_property
-    def _vectors(self) -> FloatArray:
-        return super().vectors()
-
-    @cached_property
-    def _sizes(self) -> FloatArray:
-        return super().pixel_size()
-
-    def vectors(self, rows: slice = slice(None)) -> FloatArray:
-        """Return the viewing directions, as `Directions.vectors`."""
-        return self._vectors[rows]
-
-    def pixel_size(self, rows: slice = slice(None)) -> FloatArray:
-        """Return the sides of the pixels, as `Directions.pixel_size`."""
-        return self._sizes[rows]
 
 
 @dataclass(frozen=True, eq=False)
@@ -83,10 +64,13 @@ class Studio:
         Quality, seed, rays.
     rounds : list of int
         Batches of each film of crystals; found by `measure` where it is empty.
+    shelf : Shelf, optional
+        Clear skies of the film (`skyoptics.rendering.skies.shelf_for`).
     """
 
     settings: Settings
     rounds: list[int] = field(default_factory=list)
+    shelf: Shelf | None = None
     _tables: dict[Any, list[tuple[Scatterer, ...]]] = field(default_factory=dict)
     _films: dict[str, Film] = field(default_factory=dict)
     _grid: HeldGrid | None = None
@@ -106,6 +90,9 @@ class Studio:
         progress : callable
             Told about batches.
         """
+        quick = self._under_the_sky(scene, where, executor, progress)
+        if quick is not None:
+            return quick
         job = self._prepared(scene, where)
         sheets, works, mirror = self._scattered(scene, job, executor, progress)
         if works and len(self.rounds) < len(works):
@@ -121,6 +108,21 @@ class Studio:
             self.look(scene, where, executor, progress)
             most = [max(pair) for pair in zip(self.rounds, most or self.rounds, strict=True)]
         self.rounds = most
+
+    def _under_the_sky(self, scene: Scene, where: str, executor: Executor, progress: Progress) -> Shot | None:
+        """Return a frame under a clear sky of the shelf; None where the sky is not all there is behind simple sheets."""
+        if self.shelf is None:
+            return None
+        bare = scene.model_copy(update={"picture": scene.picture.model_copy(update={"sky": "plain"})})
+        job = self._prepared(bare, where)
+        if not isinstance(job.background, Background) or not all(is_table(sheet) for sheet in job.sheets):
+            return None
+        sheets, works, mirror = self._scattered(scene, job, executor, progress)
+        if works or mirror is not None or not plainly_seen(job, sheets):
+            return None
+        matrix = weights(job.bins, scene.picture.observer)
+        xyz = colours(job, sheets, matrix, self.shelf.sky(job.sources[0].direction))
+        return Shot(job, through_the_eye(job, sheets, xyz, scene.picture))
 
     def _prepared(self, scene: Scene, where: str) -> Job:
         """Return a scene's physics on a grid that is shared with the frame before where it is the same."""
@@ -224,7 +226,7 @@ class Studio:
             and mirror is None
             and job.polariser is None
             and job.cover == 0.0
-            and tables_only(job, sheets)
+            and plainly_seen(job, sheets)
         ):
             xyz = colours(job, sheets, weights(job.bins, observer))
         else:

@@ -140,7 +140,7 @@ def _examine(model: type[Table], data: Any, prefix: KeyPath, folder: Path | None
             case "words":
                 findings.append((path, detail["msg"]))
             case "conflicts":
-                findings += [((*path, key), message) for key, message in detail["ctx"]["conflicts"]]
+                findings += [((*path, *key.split(".")), message) for key, message in detail["ctx"]["conflicts"]]
             case "extra_forbidden":
                 findings.append((path, _unknown(path, model, inner, data)))
             case "missing" if value is _ABSENT:
@@ -240,7 +240,7 @@ def _conflicts_beside(model: type[Table], data: Any, prefix: KeyPath, faulty: se
         wrong = {path[len(table_path)] for path in faulty if path[: len(table_path)] == table_path != path}
         fields = rule.table.model_fields
         sound = {name: table.get(name, field.default) for name, field in fields.items() if name not in wrong}
-        findings += [((*table_path, key), message) for key, message in rule.table.conflicts(sound)]
+        findings += [((*table_path, *key.split(".")), message) for key, message in rule.table.conflicts(sound)]
     return findings
 
 

@@ -495,3 +495,16 @@ class Scene(Table):
     ground: Annotated[Ground | None, note("The land around; left out, it is level and even")] = None
     camera: Annotated[Camera, note("Who looks")] = Camera()
     picture: Annotated[Picture, note("What comes out")] = Picture()
+
+    @classmethod
+    def conflicts(cls, values: Mapping[str, Any]) -> Iterator[Conflict]:
+        """Yield what would fix the exposure twice: a camera's settings beside an exposure value or a meter."""
+        camera, picture = values.get("camera"), values.get("picture")
+        if not isinstance(camera, Camera) or not isinstance(picture, Picture) or camera.aperture is None:
+            return
+        for key, usual in (("exposure_ev", None), ("metering", "sky")):
+            if getattr(picture, key) != usual:
+                yield (
+                    f"picture.{key}",
+                    "cannot stand beside camera.aperture, exposure_s and iso, which fix the exposure; keep one of the two",
+                )

@@ -9,7 +9,7 @@ from pydantic import BaseModel, ConfigDict, model_validator
 from pydantic_core import PydanticCustomError
 
 Conflict = tuple[str, str]
-"""A key and what is wrong with it beside the other keys of its table."""
+"""A key (with its table before a dot, where that is another one) and what is wrong with it beside other keys."""
 
 
 class Table(BaseModel):

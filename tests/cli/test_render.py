@@ -158,3 +158,18 @@ def test_a_change_of_quality_is_no_change_of_scene(command, tiny):
     assert "have changed" not in command("render", tiny, "--quality", "normal", "--seed", 21).err
     moved = command("render", tiny, "--quality", "normal", "--seed", 21, "--set", "air.1.temperature_c=20")
     assert "have changed" in moved.err
+
+
+def test_when_to_see_it_today(command, tiny, tmp_path):
+    """The caption ends with a window of today at the place, in the language asked for."""
+    done = command("render", tiny, "--quality", "draft", "--today", "0N 0E", "--tz", "UTC", "--lang", "de", "--json")
+    assert done.code == 0
+    report = json.loads(done.out)
+    assert report["today"].startswith("Heute zu sehen: ")
+    assert "Azimut" in report["today"]  # on the equator the sun is low twice on every day of the year
+    assert report["caption"].endswith(report["today"])
+    assert report["today"] in (tmp_path / "outputs/tiny/tiny.caption.txt").read_text(encoding="utf-8")
+    lost = command("render", tiny, "--today", "95N 0E")
+    assert lost.code == 1
+    assert "latitude" in lost.err
+    assert command("render", tiny, "--tz", "UTC").code == 2

@@ -206,3 +206,10 @@ def test_a_horizon_from_a_file(tmp_path):
     job = build(scene(tmp_path, LIGHT, RAIN, camera(), PICTURE, ground), "scene.toml")
     assert float(job.land.elevation(90 * DEG)) == pytest.approx(2 * DEG)
     assert float(job.land.elevation(82.5 * DEG)) == pytest.approx(1 * DEG)
+
+
+def test_an_exposure_is_fixed_once(tmp_path):
+    """The camera's settings and an exposure value cannot both stand: told when the file is read, with its line."""
+    picture = PICTURE + "exposure_ev = 12\n"
+    with pytest.raises(SceneError, match=r"(?s)scene.toml:\d+: picture.exposure_ev: cannot stand beside camera.aperture"):
+        scene(tmp_path, LIGHT, RAIN, camera() + "aperture = 8\nexposure_s = 0.01\niso = 100\n", picture)

@@ -64,7 +64,10 @@ def test_whole_numbers_stay_whole(tiny):
 def test_choices_and_flags(tiny):
     lenses = steps(tiny, (), read("camera.lens=rectilinear,equidistant"))
     assert [step.scene.camera.lens for step in lenses] == ["rectilinear", "equidistant"]
-    assert [caption(step, read("camera.lens=rectilinear,equidistant")) for step in lenses] == ["rectilinear", "equidistant"]
+    assert [caption(step, read("camera.lens=rectilinear,equidistant")) for step in lenses] == [
+        "rectilinear",
+        "equidistant",
+    ]
 
 
 @pytest.mark.parametrize("between", [":", "/", ".."])
