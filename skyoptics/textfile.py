@@ -8,7 +8,7 @@ from skyoptics.errors import DataFileError
 
 
 def read(path: str | Path, largest: int, what: str) -> str:
-    """Return a file's text with line ends as ``\\n`` and without a byte-order mark.
+    """Return a file's text with plain line ends and without a byte-order mark.
 
     Parameters
     ----------

@@ -57,14 +57,14 @@ def command(
     seed: int,
     threads: int | None,
 ) -> None:
-    r"""Film SCENE, a TOML file or the name of an example, while one of its values changes.
+    """Film SCENE, a TOML file or the name of an example, while one of its values changes.
 
     A list of values after commas gives a film that rests on each of them for its share of the time. A film that was stopped
     goes on with the same command: frames lie in FILE.frames until it is done.
 
     \b
-    Example: skyoptics animate double-bow --vary light.elevation_deg=0:40 --seconds 5 --fps 25 --out bow.mp4
-    """
+    Example: skyoptics animate double-bow --vary light.elevation_deg=0:40 --out bow.mp4
+    """  # noqa: D301
     from skyoptics.colour import video
     from skyoptics.rendering import vary
     from skyoptics.rendering.frames import check, frame_count

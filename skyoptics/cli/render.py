@@ -50,7 +50,9 @@ from skyoptics.cli.printed import Paper
     "--sheet", "on_sheet", is_flag=True, help="All values of --vary on one comparison sheet, exposure and scale shared."
 )
 @click.option(
-    "--today", metavar="PLACE", help="Add to the caption when this can be seen today: coordinates, or one of your places."
+    "--today",
+    metavar="PLACE",
+    help="Add to the caption when this can be seen today: coordinates, or one of your places.",
 )
 @click.option("--tz", help="Its time zone, such as Europe/Zurich, where it cannot be looked up.")
 @click.option(

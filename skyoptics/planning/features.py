@@ -15,8 +15,9 @@ moonbow    42.37°  a primary by moonlight
 
 Halos go by the names of `skyoptics.crystals.arcs`, save what lies below the horizon whenever the sun is up. Circles, parhelia,
 the parhelic circle, the circumzenithal and the circumhorizontal arc are closed forms. The rest is interpolated from a table with
-a row every degree of sun height (two for the slowest, `docs/tools/bake_arc_standings.py`): against loci worked out at random
-heights crowns agree to 0.1°, shares to 0.05, feet to 2°, save where branches come or go.
+a row every degree of sun height (two for the slowest, `docs/tools/bake_arc_standings.py`). Against loci at 328 sun heights drawn at
+random, crowns are off by 0.002° in the median, 0.1° at the 95th and 0.8° at the 99th percentile, feet by 0.02° in the median and
+0.2° at the 90th, shares by 0.02 at the 99th: the large ones where branches come or go within a row.
 """
 
 from __future__ import annotations

@@ -44,8 +44,8 @@ def predict(job: Job, threads: int, data: bool, only: bool = False) -> int:
     """
     rows, columns = job.directions.shape
     pixels, bands = rows * columns, len(job.bins)
-    films = sum(isinstance(sheet, CrystalSheet) and not is_table(sheet) for sheet in job.sheets)
-    films *= 1 if job.water is None else 2  # one more for what the water mirrors
+    oriented = sum(isinstance(sheet, CrystalSheet) and not is_table(sheet) for sheet in job.sheets)
+    films = oriented * (1 if job.water is None else 2)  # one more for what the water mirrors
     picture = pixels * (12 + 12)  # XYZ and linear RGB in float32
     radiance = pixels * (4 * bands + 2 * 8) if data else 0
     blocks = threads * max(BLOCK, columns) * bands * 8 * 4
@@ -61,9 +61,8 @@ def predict(job: Job, threads: int, data: bool, only: bool = False) -> int:
         cells = -(-rows // side) * -(-columns // side)
         planes += len(job.sources) * cells * components * (8 + 4) * bands + threads * int(_LAYER_BATCH)
     flat = sum(isinstance(sheet, DropSheet) and not is_table(sheet) for sheet in job.sheets) * len(job.sources)
-    return int(
-        _PROGRAM + len(job.sheets) * _TABLE + flat * _FLAT_TABLE + picture + radiance + blocks + planes + noise + flying
-    )
+    tables = (len(job.sheets) - oriented) * _TABLE + flat * _FLAT_TABLE
+    return int(_PROGRAM + tables + picture + radiance + blocks + planes + noise + flying)
 
 
 def check(need: int) -> None:

@@ -211,5 +211,7 @@ def test_a_horizon_from_a_file(tmp_path):
 def test_an_exposure_is_fixed_once(tmp_path):
     """The camera's settings and an exposure value cannot both stand: told when the file is read, with its line."""
     picture = PICTURE + "exposure_ev = 12\n"
-    with pytest.raises(SceneError, match=r"(?s)scene.toml:\d+: picture.exposure_ev: cannot stand beside camera.aperture"):
+    with pytest.raises(
+        SceneError, match=r"(?s)scene.toml:\d+: picture.exposure_ev: cannot stand beside camera.aperture"
+    ):
         scene(tmp_path, LIGHT, RAIN, camera() + "aperture = 8\nexposure_s = 0.01\niso = 100\n", picture)
