@@ -212,7 +212,7 @@ def test_an_arc_without_closed_form_is_met() -> None:
     """Against the outline at the meetings' own instants: `skyoptics.planning.approach` promises 0.1°."""
     from skyoptics.light import position
 
-    feature, begin = features.find("upper_suncave_parry"), datetime(2027, 1, 10, 9, tzinfo=UTC)
+    feature, begin = features.find("upper_sunvex_parry"), datetime(2027, 1, 10, 8, tzinfo=UTC)
     end = begin + timedelta(hours=2)
     seen = position.sun(PLACE.latitude_deg, PLACE.longitude_deg, begin + timedelta(hours=1), PLACE.height_m)
     first, second = feature.outline(seen.azimuth_deg * DEG, seen.elevation_deg * DEG)
