@@ -117,7 +117,7 @@ class Shelf:
         sun = np.array([0.0, np.cos(height * DEG), np.sin(height * DEG)])
         sky = ClearSky(self.bins, sun, self.air, self.albedo)
         matrix = weights(self.bins, self.observer)
-        return np.ascontiguousarray(sky._table @ matrix), sky.ground @ matrix
+        return np.ascontiguousarray(sky.table @ matrix), sky.ground @ matrix
 
 
 def shelf_for(scenes: Sequence[Scene]) -> Shelf | None:

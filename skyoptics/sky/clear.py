@@ -112,6 +112,8 @@ class ClearSky:
         Radiance of the ground [W m⁻² sr⁻¹ nm⁻¹].
     orders : int
         Orders of scattering that were added up.
+    table : ndarray, shape (elevation, azimuth, 3, nλ)
+        What pictures are read from: the lines of sight in even steps of √elevation and of the angle to the sun's plane.
 
     Raises
     ------
@@ -128,7 +130,7 @@ class ClearSky:
     direct: FloatArray = field(init=False)
     ground: FloatArray = field(init=False)
     orders: int = field(init=False)
-    _table: FloatArray = field(init=False, repr=False)
+    table: FloatArray = field(init=False, repr=False)
 
     def __post_init__(self) -> None:
         sun = np.asarray(self.sun, dtype=np.float64)
@@ -151,7 +153,7 @@ class ClearSky:
         set_(self, "direct", direct)
         set_(self, "ground", self.albedo / np.pi * (diffuse + direct))
         set_(self, "orders", light.orders)
-        set_(self, "_table", _refine(coarse @ into_bins.T))
+        set_(self, "table", _refine(coarse @ into_bins.T))
 
     def radiance(self, vectors: ArrayLike) -> FloatArray:
         """Return the spectral radiance of sky and ground, without the sun's own disc.
@@ -172,7 +174,7 @@ class ClearSky:
         gamma = DEPOLARISATION / (2.0 - DEPOLARISATION)
         in_parts(
             lambda part: kernels.look_up(
-                flat[part], self.sun, self._table, gamma, AEROSOL_LOBES, self.ground, result[part]
+                flat[part], self.sun, self.table, gamma, AEROSOL_LOBES, self.ground, result[part]
             ),
             len(flat),
         )
