@@ -96,6 +96,26 @@ def check_size(shapes: Sequence[tuple[int, int]]) -> None:
         raise _too_large(least, max(columns for _, columns in shapes), len(shapes), "at least ")
 
 
+def check_first(picture: Picture, count: int) -> None:
+    """Refuse a page by its first picture, before the other ones are rendered.
+
+    Parameters
+    ----------
+    picture : Picture
+        The first.
+    count : int
+        How many there will be.
+
+    Raises
+    ------
+    DomainError
+        If as many of this size, stored at their smallest, would be half as large again as a page may be.
+    """
+    about = count * len(b64encode(jpeg(picture, QUALITIES[-1])))
+    if about > 1.5 * LIMIT:
+        raise _too_large(about, picture.directions.shape[1], count, "about ")
+
+
 def page(pictures: Sequence[Picture], asked: Asked) -> str:
     """Return the HTML text of a page.
 

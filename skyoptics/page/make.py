@@ -76,6 +76,8 @@ def make(where: str, settings: Settings, asked: Asked, file: Path, progress: Pro
 
         side = spectra_side(scene, len(scenes))
         pictures.append(take(scene, where, settings, side, asked.lang, tell))
+        if number == 1:
+            document.check_first(pictures[0], len(scenes))
     apart = exposures_apart(pictures)
     notes = []
     if asked.shared:

@@ -141,3 +141,10 @@ def test_contrast_of_texts():
                 assert contrast(scheme[name], scheme[ground]) >= 4.5, name
         for name in ("short", "middle", "long", "mark"):
             assert contrast(scheme[name], scheme["shade"]) >= 3.0, name
+
+
+def test_too_large_by_the_first_picture(pictures):
+    """Hundreds of pictures like the first cannot fit: told before the second is rendered."""
+    document.check_first(pictures[0], 3)
+    with pytest.raises(DomainError, match=r"about \d+\.\d MB, and 10 MB are allowed: lower camera.width_px"):
+        document.check_first(pictures[0], 100_000)
